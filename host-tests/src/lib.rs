@@ -1,0 +1,1 @@
+//! Checks of the generator and the core against the outside world.

@@ -1,0 +1,166 @@
+//! The arm as measured: what the engineer writes in `arm.toml`, checked, in SI units and radians.
+
+use serde::Serialize;
+
+/// A quantity along the spine: linear between knots, constant outside them.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct Profile {
+    /// `(s, value)` with `s` in 0..=1 strictly increasing; one knot means constant. Never empty.
+    knots: Vec<(f64, f64)>,
+}
+
+impl Profile {
+    /// A constant quantity.
+    pub fn constant(value: f64) -> Self {
+        Self { knots: vec![(0.0, value)] }
+    }
+
+    /// Linear between `knots`, which must be strictly increasing in `s` within 0..=1.
+    ///
+    /// # Errors
+    /// The position in `knots` of the first offending knot.
+    pub fn from_knots(knots: Vec<(f64, f64)>) -> Result<Self, usize> {
+        if knots.is_empty() {
+            return Err(0);
+        }
+        for (i, &(s, value)) in knots.iter().enumerate() {
+            let in_order = i == 0 || knots[i - 1].0 < s;
+            if !((0.0..=1.0).contains(&s) && value.is_finite() && in_order) {
+                return Err(i);
+            }
+        }
+        Ok(Self { knots })
+    }
+
+    /// The knots `(s, value)`.
+    pub fn knots(&self) -> &[(f64, f64)] {
+        &self.knots
+    }
+
+    /// Value at `s`; outside the first and last knot the nearest knot's value.
+    pub fn at(&self, s: f64) -> f64 {
+        let after = self.knots.partition_point(|&(at, _)| at <= s);
+        if after == 0 {
+            return self.knots[0].1;
+        }
+        let (s0, v0) = self.knots[after - 1];
+        match self.knots.get(after) {
+            None => v0,
+            Some(&(s1, v1)) => v0 + (v1 - v0) * (s - s0) / (s1 - s0),
+        }
+    }
+
+    /// The same profile with every value multiplied by `factor`.
+    pub fn scaled(&self, factor: f64) -> Self {
+        Self { knots: self.knots.iter().map(|&(s, v)| (s, v * factor)).collect() }
+    }
+
+    /// Integral from `s` to 1 (exact: trapezoids over the linear pieces).
+    pub fn integral_to_tip(&self, s: f64) -> f64 {
+        let mut sum = 0.0;
+        let mut at = s;
+        for &(knot, _) in self.knots.iter().filter(|k| k.0 > s && k.0 < 1.0) {
+            sum += 0.5 * (knot - at) * (self.at(at) + self.at(knot));
+            at = knot;
+        }
+        sum + 0.5 * (1.0 - at) * (self.at(at) + self.at(1.0))
+    }
+}
+
+/// The springy spine.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct Spine {
+    /// Length from clamp to tip [m], > 0.
+    pub length_m: f64,
+    /// Bending stiffness [N m2], > 0 everywhere.
+    pub bending_stiffness_n_m2: Profile,
+    /// Mass per length [kg/m], >= 0.
+    pub mass_per_length_kg_m: Profile,
+    /// Curvature at rest without load [rad/m], any sign.
+    pub rest_curvature_rad_m: Profile,
+    /// Thickness in the bending plane [m], > 0.
+    pub thickness_m: f64,
+    /// Largest strain the spine may see [-], > 0.
+    pub allowed_strain: f64,
+    /// Damping ratio of the first mode with the tip held [-], in 0..1.
+    pub damping_ratio: f64,
+}
+
+/// A mass clamped to the spine.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize)]
+pub struct Lump {
+    /// Where along the spine, 0 at the base, 1 at the tip.
+    pub at: f64,
+    /// Mass [kg], >= 0.
+    pub mass_kg: f64,
+}
+
+/// What the tip carries.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct Payload {
+    /// Mass [kg], >= 0.
+    pub mass_kg: f64,
+}
+
+/// How the base is mounted.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct Base {
+    /// Tilt of the base tangent from the upward vertical [rad]; positive turns towards +x.
+    pub tilt_rad: f64,
+}
+
+/// The two tendons.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct Tendons {
+    /// Distance of each tendon from the spine [m], > 0.
+    pub offset_m: f64,
+    /// Tension both carry at no couple [N], >= 0.
+    pub pretension_n: f64,
+    /// Largest tension allowed [N], > pretension.
+    pub max_tension_n: f64,
+}
+
+/// What the drive controls, and the setpoint range to tabulate.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize)]
+pub enum Drive {
+    /// Take-up controlled: the tip orientation is the setpoint [rad].
+    HeldTip {
+        /// Lowest and highest setpoint, increasing.
+        setpoints_rad: [f64; 2],
+    },
+    /// Tension controlled: the tip couple is the setpoint [N m].
+    AppliedCouple {
+        /// Lowest and highest setpoint, increasing.
+        setpoints_n_m: [f64; 2],
+    },
+}
+
+/// The accuracy asked of the table.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize)]
+pub struct Accuracy {
+    /// Worst interpolation error of angles [rad], > 0.
+    pub angle_rad: f64,
+    /// Worst error of couples and energies as a fraction of m g L, > 0.
+    pub couple_fraction: f64,
+}
+
+/// A checked arm: everything finite and inside its range.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct Arm {
+    /// What the engineer calls it.
+    pub name: String,
+    /// The springy spine.
+    pub spine: Spine,
+    /// Masses along the spine.
+    pub lumps: Vec<Lump>,
+    /// What the tip carries.
+    pub payload: Payload,
+    /// How the base is mounted.
+    pub base: Base,
+    /// The two tendons.
+    pub tendons: Tendons,
+    /// Drive kind and setpoint range.
+    pub drive: Drive,
+    /// Accuracy asked of the table.
+    pub accuracy: Accuracy,
+}
