@@ -1,6 +1,29 @@
 //! The arm as measured: what the engineer writes in `arm.toml`, checked, in SI units and radians.
+//!
+//! [`read`] goes text -> keys as written (`3_written.rs`) -> checked [`Arm`] (`4_checking.rs`). Every
+//! fault is an [`ArmFileError`] that shows the place, the value found and what is allowed; the
+//! allowed ranges are in `2_limits.rs`.
 
 use serde::Serialize;
+use sha2::{Digest, Sha256};
+
+#[path = "1_arm_file/4_checking.rs"]
+mod checking;
+#[path = "1_arm_file/2_limits.rs"]
+mod limits;
+#[path = "1_arm_file/1_message.rs"]
+mod message;
+#[path = "1_arm_file/5_tests.rs"]
+#[cfg(test)]
+mod tests;
+#[path = "1_arm_file/3_written.rs"]
+mod written;
+
+pub use checking::{parse, read};
+pub use message::ArmFileError;
+
+/// Standard gravity (m/s2), exact by convention (3rd General Conference on Weights and Measures, 1901).
+pub const STANDARD_GRAVITY_M_S2: f64 = 9.806_65;
 
 /// A quantity along the spine: linear between knots, constant outside them.
 #[derive(Clone, Debug, PartialEq, Serialize)]
@@ -12,7 +35,9 @@ pub struct Profile {
 impl Profile {
     /// A constant quantity.
     pub fn constant(value: f64) -> Self {
-        Self { knots: vec![(0.0, value)] }
+        Self {
+            knots: vec![(0.0, value)],
+        }
     }
 
     /// Linear between `knots`, which must be strictly increasing in `s` within 0..=1.
@@ -52,7 +77,9 @@ impl Profile {
 
     /// The same profile with every value multiplied by `factor`.
     pub fn scaled(&self, factor: f64) -> Self {
-        Self { knots: self.knots.iter().map(|&(s, v)| (s, v * factor)).collect() }
+        Self {
+            knots: self.knots.iter().map(|&(s, v)| (s, v * factor)).collect(),
+        }
     }
 
     /// Integral from `s` to 1 (exact: trapezoids over the linear pieces).
@@ -70,19 +97,19 @@ impl Profile {
 /// The springy spine.
 #[derive(Clone, Debug, PartialEq, Serialize)]
 pub struct Spine {
-    /// Length from clamp to tip [m], > 0.
+    /// Length from clamp to tip (m), > 0.
     pub length_m: f64,
-    /// Bending stiffness [N m2], > 0 everywhere.
+    /// Bending stiffness (N m2), > 0 everywhere.
     pub bending_stiffness_n_m2: Profile,
-    /// Mass per length [kg/m], >= 0.
+    /// Mass per length (kg/m), >= 0.
     pub mass_per_length_kg_m: Profile,
-    /// Curvature at rest without load [rad/m], any sign.
+    /// Curvature at rest without load (rad/m), any sign.
     pub rest_curvature_rad_m: Profile,
-    /// Thickness in the bending plane [m], > 0.
+    /// Thickness in the bending plane (m), > 0.
     pub thickness_m: f64,
-    /// Largest strain the spine may see [-], > 0.
+    /// Largest strain the spine may see, > 0.
     pub allowed_strain: f64,
-    /// Damping ratio of the first mode with the tip held [-], in 0..1.
+    /// Damping ratio of the first mode with the tip held, in 0..1.
     pub damping_ratio: f64,
 }
 
@@ -91,44 +118,44 @@ pub struct Spine {
 pub struct Lump {
     /// Where along the spine, 0 at the base, 1 at the tip.
     pub at: f64,
-    /// Mass [kg], >= 0.
+    /// Mass (kg), >= 0.
     pub mass_kg: f64,
 }
 
 /// What the tip carries.
 #[derive(Clone, Debug, PartialEq, Serialize)]
 pub struct Payload {
-    /// Mass [kg], >= 0.
+    /// Mass (kg), >= 0.
     pub mass_kg: f64,
 }
 
 /// How the base is mounted.
 #[derive(Clone, Debug, PartialEq, Serialize)]
 pub struct Base {
-    /// Tilt of the base tangent from the upward vertical [rad]; positive turns towards +x.
+    /// Tilt of the base tangent from the upward vertical (rad); positive turns towards +x.
     pub tilt_rad: f64,
 }
 
 /// The two tendons.
 #[derive(Clone, Debug, PartialEq, Serialize)]
 pub struct Tendons {
-    /// Distance of each tendon from the spine [m], > 0.
+    /// Distance of each tendon from the spine (m), > 0.
     pub offset_m: f64,
-    /// Tension both carry at no couple [N], >= 0.
+    /// Tension both carry at no couple (N), >= 0.
     pub pretension_n: f64,
-    /// Largest tension allowed [N], > pretension.
+    /// Largest tension allowed (N), > pretension.
     pub max_tension_n: f64,
 }
 
 /// What the drive controls, and the setpoint range to tabulate.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize)]
 pub enum Drive {
-    /// Take-up controlled: the tip orientation is the setpoint [rad].
+    /// Take-up controlled: the tip orientation is the setpoint (rad).
     HeldTip {
         /// Lowest and highest setpoint, increasing.
         setpoints_rad: [f64; 2],
     },
-    /// Tension controlled: the tip couple is the setpoint [N m].
+    /// Tension controlled: the tip couple is the setpoint (N m).
     AppliedCouple {
         /// Lowest and highest setpoint, increasing.
         setpoints_n_m: [f64; 2],
@@ -138,7 +165,7 @@ pub enum Drive {
 /// The accuracy asked of the table.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize)]
 pub struct Accuracy {
-    /// Worst interpolation error of angles [rad], > 0.
+    /// Worst interpolation error of angles (rad), > 0.
     pub angle_rad: f64,
     /// Worst error of couples and energies as a fraction of m g L, > 0.
     pub couple_fraction: f64,
@@ -163,4 +190,36 @@ pub struct Arm {
     pub drive: Drive,
     /// Accuracy asked of the table.
     pub accuracy: Accuracy,
+}
+
+impl Arm {
+    /// All mass: spine, lumps and payload (kg), > 0.
+    pub fn total_mass_kg(&self) -> f64 {
+        let spine_kg = self.spine.length_m * self.spine.mass_per_length_kg_m.integral_to_tip(0.0);
+        let lumps_kg: f64 = self.lumps.iter().map(|lump| lump.mass_kg).sum();
+        spine_kg + lumps_kg + self.payload.mass_kg
+    }
+
+    /// Bending stiffness averaged along the spine (N m2), > 0.
+    pub fn mean_bending_stiffness_n_m2(&self) -> f64 {
+        self.spine.bending_stiffness_n_m2.integral_to_tip(0.0)
+    }
+
+    /// Dimensionless stiffness `B / (m g L^2)` with the mean stiffness and the total mass, > 0.
+    ///
+    /// It decides how the arm behaves under gravity: stiff arms stand, soft ones flop.
+    pub fn gamma(&self) -> f64 {
+        let length_m = self.spine.length_m;
+        self.mean_bending_stiffness_n_m2()
+            / (self.total_mass_kg() * STANDARD_GRAVITY_M_S2 * length_m * length_m)
+    }
+
+    /// Tells arms apart: the first 8 bytes of SHA-256 over the checked values, name included.
+    ///
+    /// Comments, layout and key order of the file do not count; a changed value does.
+    pub fn fingerprint(&self) -> [u8; 8] {
+        let values = serde_json::to_vec(self).expect("an arm is plain numbers and text");
+        let digest = Sha256::digest(values);
+        std::array::from_fn(|i| digest[i])
+    }
 }

@@ -1,0 +1,56 @@
+//! What a table file holds. Little endian throughout:
+//!
+//! ```text
+//! prefix, 24 bytes   magic "WTHY", version u16, slice count u16, total length u32, header length u16,
+//!                    directory length u16, knots length u32, reserved u32 = 0
+//! header             postcard, [`Header`]
+//! directory          postcard, for each slice a [`SliceEntry`], its [`BranchEntry`]s, its [`Stretch`]es
+//! knots              f32, branches in directory order; a knot is t, then (value, d/dt) of each quantity:
+//!                    stable branch    mean angle, conjugate, energy, tip x, tip y, restoring stiffness   13 f32
+//!                    unstable branch  mean angle, conjugate, energy                                       7 f32
+//! checksum           CRC-32 (ISO-HDLC) of everything before it
+//! ```
+//!
+//! Between knots every quantity is a cubic Hermite polynomial in `t`; [`ParameterMap`] takes a setpoint to `t`.
+
+#[path = "2_directory.rs"]
+mod directory;
+#[path = "1_header.rs"]
+mod header;
+#[path = "3_parameter.rs"]
+mod parameter;
+#[cfg(feature = "write")]
+#[path = "4_write.rs"]
+pub mod write;
+
+pub use directory::{BranchEntry, Limit, Requirement, SliceEntry, Stretch};
+pub use header::{Deducted, Drive, Header, Units, WorstError};
+pub use parameter::ParameterMap;
+
+use serde::Deserialize;
+
+/// The first four bytes of every table.
+pub const MAGIC: [u8; 4] = *b"WTHY";
+/// The version of the format that this crate reads and writes. It rises with every change of meaning.
+pub const VERSION: u16 = 1;
+/// Length of the prefix in bytes.
+pub const PREFIX_LEN: usize = 24;
+/// Length of the checksum at the end in bytes.
+pub const CRC_LEN: usize = 4;
+
+/// Byte positions in the prefix.
+pub(crate) mod at {
+    pub(crate) const MAGIC: usize = 0;
+    pub(crate) const VERSION: usize = 4;
+    pub(crate) const SLICE_COUNT: usize = 6;
+    pub(crate) const TOTAL_LEN: usize = 8;
+    pub(crate) const HEADER_LEN: usize = 12;
+    pub(crate) const DIRECTORY_LEN: usize = 14;
+    pub(crate) const KNOTS_LEN: usize = 16;
+    pub(crate) const RESERVED: usize = 20;
+}
+
+/// One postcard record from the front of `bytes`, and the bytes after it; `None` when it does not decode.
+pub(crate) fn take<'a, T: Deserialize<'a>>(bytes: &'a [u8]) -> Option<(T, &'a [u8])> {
+    postcard::take_from_bytes(bytes).ok()
+}

@@ -1,0 +1,542 @@
+//! Every way in which the bytes of a table can be wrong.
+
+use core::fmt;
+
+use crate::words::Word::{F, N, T, X};
+use crate::words::Words;
+
+/// Why bytes are not a table. Checked in this order, so that the first reason is the deepest.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum TableError {
+    /// Fewer bytes than the prefix and the checksum take.
+    TooShort {
+        /// The least possible length.
+        least: u32,
+        /// The length found.
+        found: u32,
+    },
+    /// The first four bytes are not those of a table.
+    Magic {
+        /// The bytes found.
+        found: [u8; 4],
+    },
+    /// A format version that this program does not read.
+    Version {
+        /// The version it reads.
+        expected: u16,
+        /// The version found.
+        found: u16,
+    },
+    /// The lengths in the prefix contradict each other or the bytes given.
+    Size {
+        /// Which length.
+        section: Section,
+        /// What the prefix says.
+        expected: u32,
+        /// What there is.
+        found: u32,
+    },
+    /// The bytes have changed since they were written.
+    Crc {
+        /// The checksum stored at the end.
+        stored: u32,
+        /// The checksum of the bytes.
+        computed: u32,
+    },
+    /// The bytes arrived as written, but what they say cannot be.
+    Meaning(Fault),
+}
+
+/// The lengths that [`TableError::Size`] speaks of.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Section {
+    /// Total length against the bytes given.
+    Total,
+    /// Total length against the sum of the sections.
+    Sum,
+    /// The reserved word, which must be 0.
+    Reserved,
+}
+
+/// What a table says that cannot be.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum Fault {
+    /// The header does not decode.
+    HeaderBroken,
+    /// Bytes are left after the header.
+    HeaderLeftOver {
+        /// How many.
+        bytes: u32,
+    },
+    /// A value of the header is outside its physical range.
+    HeaderValue {
+        /// The field.
+        field: &'static str,
+        /// Its value.
+        value: f32,
+    },
+    /// The setpoint range is empty or reversed.
+    SetpointRange {
+        /// Lowest setpoint.
+        lo: f32,
+        /// Highest setpoint.
+        hi: f32,
+    },
+    /// No slice at all.
+    NoSlices,
+    /// A record of the directory does not decode.
+    DirectoryBroken {
+        /// The slice.
+        slice: u16,
+    },
+    /// Bytes are left after the directory's last record.
+    DirectoryLeftOver {
+        /// How many.
+        bytes: u32,
+    },
+    /// A payload is negative, not finite, or not above that of the slice before.
+    Payload {
+        /// The slice.
+        slice: u16,
+        /// Its payload [kg].
+        found: f32,
+        /// The payload of the slice before [kg].
+        previous: Option<f32>,
+    },
+    /// A slice without branches.
+    NoBranches {
+        /// The slice.
+        slice: u16,
+    },
+    /// A branch is wrong.
+    Branch {
+        /// The slice.
+        slice: u16,
+        /// The branch.
+        branch: u8,
+        /// In what way.
+        fault: BranchFault,
+    },
+    /// A stretch is wrong.
+    Stretch {
+        /// The slice.
+        slice: u16,
+        /// The stretch, counted in the slice.
+        stretch: u8,
+        /// In what way.
+        fault: StretchFault,
+    },
+    /// Knots are left after the last branch.
+    KnotsLeftOver {
+        /// How many bytes.
+        bytes: u32,
+    },
+}
+
+/// What is wrong with a branch.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum BranchFault {
+    /// An end or an anchor is not finite, or larger than 1e9.
+    NotFinite,
+    /// The cover is empty or reversed.
+    EmptyCover {
+        /// Lower end.
+        from: f32,
+        /// Upper end.
+        to: f32,
+    },
+    /// The anchors lie inside the cover.
+    Anchors {
+        /// Lower anchor.
+        anchor_from: f32,
+        /// Lower end of the cover.
+        from: f32,
+        /// Upper end of the cover.
+        to: f32,
+        /// Upper anchor.
+        anchor_to: f32,
+    },
+    /// The cover reaches beyond the setpoint range of the header.
+    OutsideRange {
+        /// Lower end of the cover.
+        from: f32,
+        /// Upper end of the cover.
+        to: f32,
+        /// Lowest setpoint of the table.
+        lo: f32,
+        /// Highest setpoint of the table.
+        hi: f32,
+    },
+    /// An unstable branch has exits.
+    ExitOfUnstable {
+        /// The exits, one bit each.
+        exits: u32,
+    },
+    /// An exit is not a branch of index 1.
+    Exit {
+        /// The number of the branch it refers to.
+        exit: u8,
+    },
+    /// Fewer than two knots.
+    TooFewKnots {
+        /// How many.
+        knots: u16,
+    },
+    /// The knots end before those of this branch do.
+    KnotsMissing {
+        /// Bytes that the branch takes.
+        expected: u32,
+        /// Bytes that are left.
+        found: u32,
+    },
+    /// A knot value is not finite, or larger than 1e9.
+    Knot {
+        /// The knot.
+        knot: u16,
+        /// The place in the knot, 0 for t.
+        place: u8,
+    },
+    /// The parameter does not increase.
+    KnotOrder {
+        /// The knot.
+        knot: u16,
+        /// The parameter of the knot before.
+        previous: f32,
+        /// Its own parameter.
+        t: f32,
+    },
+    /// The knots do not reach the ends of the cover.
+    KnotCover {
+        /// Parameter of the first knot.
+        first: f32,
+        /// Parameter of the lower end.
+        begin: f32,
+        /// Parameter of the last knot.
+        last: f32,
+        /// Parameter of the upper end.
+        end: f32,
+    },
+}
+
+/// What is wrong with a stretch.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum StretchFault {
+    /// There is no such branch.
+    NoSuchBranch {
+        /// The branch.
+        branch: u8,
+    },
+    /// The branch is unstable.
+    UnstableBranch {
+        /// The branch.
+        branch: u8,
+        /// Its Morse index.
+        index: u8,
+    },
+    /// An end or a limit is not finite, or larger than 1e9.
+    NotFinite,
+    /// The stretch is empty or reversed.
+    Empty {
+        /// Lower end.
+        from: f32,
+        /// Upper end.
+        to: f32,
+    },
+    /// The stretch reaches beyond the cover of its branch.
+    OutsideBranch {
+        /// Lower end.
+        from: f32,
+        /// Upper end.
+        to: f32,
+        /// Lower end of the cover.
+        branch_from: f32,
+        /// Upper end of the cover.
+        branch_to: f32,
+    },
+    /// The stretches are not sorted by branch.
+    BranchOrder {
+        /// Branch of the stretch before.
+        previous: u8,
+        /// Its own branch.
+        branch: u8,
+    },
+    /// The stretch begins before the one below it has ended.
+    Overlap {
+        /// Upper end of the one below.
+        previous_to: f32,
+        /// Lower end of this one.
+        from: f32,
+    },
+}
+
+impl From<Fault> for TableError {
+    fn from(fault: Fault) -> Self {
+        Self::Meaning(fault)
+    }
+}
+
+impl fmt::Display for TableError {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match *self {
+            Self::TooShort { least, found } => f.say(&[
+                T("a table has at least "),
+                N(least),
+                T(" bytes, these are "),
+                N(found),
+                T("; give the whole file"),
+            ]),
+            Self::Magic { found } => f.say(&[
+                T("not a table: the first four bytes are "),
+                X(u32::from_be_bytes(found)),
+                T(" instead of \"WTHY\""),
+            ]),
+            Self::Version { expected, found } => f.say(&[
+                T("the table has format version "),
+                N(found.into()),
+                T(", this program reads version "),
+                N(expected.into()),
+                T("; build the table again"),
+            ]),
+            Self::Size {
+                section,
+                expected,
+                found,
+            } => f.say(&[
+                T(match section {
+                    Section::Total => {
+                        "the table is cut short or has bytes added: its length should be "
+                    }
+                    Section::Sum => {
+                        "the lengths of the table contradict each other: they should sum to "
+                    }
+                    Section::Reserved => "the reserved word of the table should be ",
+                }),
+                N(expected),
+                T(" and is "),
+                N(found),
+                T("; build or transfer the table again"),
+            ]),
+            Self::Crc { stored, computed } => f.say(&[
+                T("the table is damaged: checksum "),
+                X(computed),
+                T(" instead of "),
+                X(stored),
+                T("; transfer it again"),
+            ]),
+            Self::Meaning(fault) => {
+                f.say(&[T("the table makes no sense: ")])?;
+                fmt::Display::fmt(&fault, f)?;
+                f.say(&[T("; build it again")])
+            }
+        }
+    }
+}
+
+impl fmt::Display for Fault {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match *self {
+            Self::HeaderBroken => f.say(&[T("the header does not decode")]),
+            Self::HeaderLeftOver { bytes } => {
+                f.say(&[N(bytes), T(" bytes are left after the header")])
+            }
+            Self::HeaderValue { field, value } => f.say(&[
+                T("header value "),
+                T(field),
+                T(" = "),
+                F(value),
+                T(" is outside its range"),
+            ]),
+            Self::SetpointRange { lo, hi } => f.say(&[
+                T("the setpoint range "),
+                F(lo),
+                T(" to "),
+                F(hi),
+                T(" is empty"),
+            ]),
+            Self::NoSlices => f.say(&[T("there is no slice")]),
+            Self::DirectoryBroken { slice } => f.say(&[
+                T("the directory of slice "),
+                N(slice.into()),
+                T(" does not decode"),
+            ]),
+            Self::DirectoryLeftOver { bytes } => {
+                f.say(&[N(bytes), T(" bytes are left after the directory")])
+            }
+            Self::Payload {
+                slice,
+                found,
+                previous,
+            } => f.say(&[
+                T("the payload of slice "),
+                N(slice.into()),
+                T(" is "),
+                F(found),
+                T(" kg; it must be finite and above "),
+                F(previous.unwrap_or(0.0)),
+                T(" kg"),
+            ]),
+            Self::NoBranches { slice } => {
+                f.say(&[T("slice "), N(slice.into()), T(" has no branches")])
+            }
+            Self::Branch {
+                slice,
+                branch,
+                fault,
+            } => {
+                f.say(&[
+                    T("slice "),
+                    N(slice.into()),
+                    T(", branch "),
+                    N(branch.into()),
+                    T(": "),
+                ])?;
+                fmt::Display::fmt(&fault, f)
+            }
+            Self::Stretch {
+                slice,
+                stretch,
+                fault,
+            } => {
+                f.say(&[
+                    T("slice "),
+                    N(slice.into()),
+                    T(", stretch "),
+                    N(stretch.into()),
+                    T(": "),
+                ])?;
+                fmt::Display::fmt(&fault, f)
+            }
+            Self::KnotsLeftOver { bytes } => {
+                f.say(&[N(bytes), T(" bytes are left after the knots")])
+            }
+        }
+    }
+}
+
+impl fmt::Display for BranchFault {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match *self {
+            Self::NotFinite => f.say(&[T("an end or anchor is not finite or above 1e9")]),
+            Self::EmptyCover { from, to } => {
+                f.say(&[T("it covers nothing: "), F(from), T(" to "), F(to)])
+            }
+            Self::Anchors {
+                anchor_from,
+                from,
+                to,
+                anchor_to,
+            } => f.say(&[
+                T("its anchors "),
+                F(anchor_from),
+                T(" and "),
+                F(anchor_to),
+                T(" lie inside its cover "),
+                F(from),
+                T(" to "),
+                F(to),
+            ]),
+            Self::OutsideRange { from, to, lo, hi } => f.say(&[
+                T("its cover "),
+                F(from),
+                T(" to "),
+                F(to),
+                T(" leaves the setpoint range "),
+                F(lo),
+                T(" to "),
+                F(hi),
+            ]),
+            Self::ExitOfUnstable { exits } => {
+                f.say(&[T("it is unstable and has exits "), X(exits)])
+            }
+            Self::Exit { exit } => f.say(&[
+                T("its exit "),
+                N(exit.into()),
+                T(" is not a branch of index 1"),
+            ]),
+            Self::TooFewKnots { knots } => {
+                f.say(&[N(knots.into()), T(" knots; it needs at least 2")])
+            }
+            Self::KnotsMissing { expected, found } => f.say(&[
+                T("its knots take "),
+                N(expected),
+                T(" bytes, "),
+                N(found),
+                T(" are left"),
+            ]),
+            Self::Knot { knot, place } => f.say(&[
+                T("value "),
+                N(place.into()),
+                T(" of knot "),
+                N(knot.into()),
+                T(" is not finite or above 1e9"),
+            ]),
+            Self::KnotOrder { knot, previous, t } => f.say(&[
+                T("knot "),
+                N(knot.into()),
+                T(" has parameter "),
+                F(t),
+                T(" after "),
+                F(previous),
+            ]),
+            Self::KnotCover {
+                first,
+                begin,
+                last,
+                end,
+            } => f.say(&[
+                T("its knots reach from "),
+                F(first),
+                T(" to "),
+                F(last),
+                T(" and should reach from "),
+                F(begin),
+                T(" to "),
+                F(end),
+            ]),
+        }
+    }
+}
+
+impl fmt::Display for StretchFault {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match *self {
+            Self::NoSuchBranch { branch } => f.say(&[T("there is no branch "), N(branch.into())]),
+            Self::UnstableBranch { branch, index } => f.say(&[
+                T("branch "),
+                N(branch.into()),
+                T(" is unstable, of index "),
+                N(index.into()),
+            ]),
+            Self::NotFinite => f.say(&[T("an end or limit is not finite or above 1e9")]),
+            Self::Empty { from, to } => f.say(&[T("it is empty: "), F(from), T(" to "), F(to)]),
+            Self::OutsideBranch {
+                from,
+                to,
+                branch_from,
+                branch_to,
+            } => f.say(&[
+                F(from),
+                T(" to "),
+                F(to),
+                T(" leaves its branch, "),
+                F(branch_from),
+                T(" to "),
+                F(branch_to),
+            ]),
+            Self::BranchOrder { previous, branch } => f.say(&[
+                T("branch "),
+                N(branch.into()),
+                T(" comes after branch "),
+                N(previous.into()),
+            ]),
+            Self::Overlap { previous_to, from } => f.say(&[
+                T("it begins at "),
+                F(from),
+                T(", before the one below ends at "),
+                F(previous_to),
+            ]),
+        }
+    }
+}
+
+impl core::error::Error for TableError {}

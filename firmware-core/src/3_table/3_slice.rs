@@ -1,0 +1,187 @@
+//! Walking the directory. Records are decoded when they are asked for; the checks of [`super::Table::new`] make every
+//! decode succeed, and if the memory under a table should change all the same, the walks end early.
+
+use crate::bytes::float;
+use crate::format::{BranchEntry, SliceEntry, Stretch, take};
+
+use super::Limits;
+
+/// The arm with one payload: its branches and stretches.
+#[derive(Clone, Copy, Debug)]
+pub struct Slice<'a> {
+    /// Payload at the tip [kg].
+    pub payload_kg: f32,
+    limits: Limits,
+    branch_count: u8,
+    stretch_count: u8,
+    branches: &'a [u8],
+    stretches: &'a [u8],
+    knots: &'a [u8],
+}
+
+impl<'a> Slice<'a> {
+    /// The constants of the arm.
+    pub const fn limits(&self) -> Limits {
+        self.limits
+    }
+
+    /// Number of branches.
+    pub const fn branch_count(&self) -> u8 {
+        self.branch_count
+    }
+
+    /// The branches, in the order of their numbers.
+    pub const fn branches(&self) -> Branches<'a> {
+        Branches {
+            left: self.branch_count,
+            number: 0,
+            directory: self.branches,
+            knots: self.knots,
+        }
+    }
+
+    /// The branch with this number, `None` when there is none.
+    pub fn branch(&self, number: u8) -> Option<Branch<'a>> {
+        self.branches().find(|branch| branch.number == number)
+    }
+
+    /// The stretches of one branch, setpoint increasing; none for a branch that is unstable or does not exist.
+    pub const fn stretches(&self, branch: u8) -> Stretches<'a> {
+        Stretches {
+            branch,
+            left: self.stretch_count,
+            directory: self.stretches,
+        }
+    }
+}
+
+/// One branch of a slice.
+#[derive(Clone, Copy, Debug)]
+pub struct Branch<'a> {
+    /// Its number in the slice.
+    pub number: u8,
+    /// Its entry in the directory.
+    pub entry: BranchEntry,
+    knots: &'a [u8],
+}
+
+impl<'a> Branch<'a> {
+    /// The `place`-th value of the `knot`-th knot: 0 is t, then value and slope of each quantity in turn. `None`
+    /// beyond either end.
+    pub fn knot_value(&self, knot: u16, place: usize) -> Option<f32> {
+        let width = self.entry.floats_per_knot();
+        if place >= width {
+            return None;
+        }
+        float(
+            self.knots,
+            usize::from(knot).checked_mul(width)?.checked_add(place)?,
+        )
+    }
+
+    /// All knot values in the order of the format.
+    pub fn knot_values(&self) -> impl Iterator<Item = f32> + use<'a> {
+        let knots = self.knots;
+        (0..knots.len() / 4).map_while(move |number| float(knots, number))
+    }
+}
+
+/// The slices of a table.
+#[derive(Clone, Debug)]
+pub struct Slices<'a> {
+    limits: Limits,
+    directory: &'a [u8],
+    knots: &'a [u8],
+}
+
+impl<'a> Slices<'a> {
+    pub(super) const fn new(limits: Limits, directory: &'a [u8], knots: &'a [u8]) -> Self {
+        Self {
+            limits,
+            directory,
+            knots,
+        }
+    }
+}
+
+impl<'a> Iterator for Slices<'a> {
+    type Item = Slice<'a>;
+
+    fn next(&mut self) -> Option<Slice<'a>> {
+        let (entry, directory) = take::<SliceEntry>(self.directory)?;
+        let mut walk = Branches {
+            left: entry.branches,
+            number: 0,
+            directory,
+            knots: self.knots,
+        };
+        for _ in walk.by_ref() {}
+        let slice = Slice {
+            payload_kg: entry.payload_kg,
+            limits: self.limits,
+            branch_count: entry.branches,
+            stretch_count: entry.stretches,
+            branches: directory,
+            stretches: walk.directory,
+            knots: self.knots,
+        };
+        self.directory = walk.directory;
+        self.knots = walk.knots;
+        for _ in 0..entry.stretches {
+            self.directory = take::<Stretch>(self.directory)?.1;
+        }
+        Some(slice)
+    }
+}
+
+/// The branches of a slice.
+#[derive(Clone, Debug)]
+pub struct Branches<'a> {
+    left: u8,
+    number: u8,
+    directory: &'a [u8],
+    knots: &'a [u8],
+}
+
+impl<'a> Iterator for Branches<'a> {
+    type Item = Branch<'a>;
+
+    fn next(&mut self) -> Option<Branch<'a>> {
+        self.left = self.left.checked_sub(1)?;
+        let (entry, directory) = take::<BranchEntry>(self.directory)?;
+        let values = usize::from(entry.knots).checked_mul(entry.floats_per_knot())?;
+        let (knots, rest) = self.knots.split_at_checked(values.checked_mul(4)?)?;
+        let number = self.number;
+        self.number = number.saturating_add(1);
+        self.directory = directory;
+        self.knots = rest;
+        Some(Branch {
+            number,
+            entry,
+            knots,
+        })
+    }
+}
+
+/// The stretches of a branch.
+#[derive(Clone, Debug)]
+pub struct Stretches<'a> {
+    branch: u8,
+    left: u8,
+    directory: &'a [u8],
+}
+
+impl Iterator for Stretches<'_> {
+    type Item = Stretch;
+
+    fn next(&mut self) -> Option<Stretch> {
+        loop {
+            self.left = self.left.checked_sub(1)?;
+            let (stretch, directory) = take::<Stretch>(self.directory)?;
+            self.directory = directory;
+            if stretch.branch == self.branch {
+                return Some(stretch);
+            }
+        }
+    }
+}

@@ -1,0 +1,376 @@
+//! Every rest state of an arm over its setpoint range, followed in curvature modes and certified by shooting.
+//!
+//! Read in this order: [`modes`] the discretised rod, [`two_coordinate`] the roots it starts from, [`curve`] continuation
+//! through folds, [`shooting`] the independent audit, [`wells`] barriers.
+
+#[path = "3_curve.rs"]
+pub mod curve;
+#[path = "1_modes.rs"]
+pub mod modes;
+#[path = "4_shooting.rs"]
+pub mod shooting;
+#[path = "2_two_coordinate.rs"]
+pub mod two_coordinate;
+#[path = "5_wells.rs"]
+pub mod wells;
+
+use crate::arm_file::Accuracy;
+use crate::rod::{Held, Rod};
+use curve::{Branch, Fold, RestPoint, Solver};
+use modes::ModalRod;
+use shooting::{Shooting, Shot};
+use std::fmt;
+
+/// Most curvature modes a table is made from.
+pub const MOST_MODES: usize = 24;
+/// Fewest modes tried.
+const FEWEST_MODES: usize = 6;
+/// Setpoints spread over the range at which the list of rest states is audited.
+const AUDIT_SETPOINTS: usize = 17;
+/// How far beside a fold it is audited, as a fraction of the setpoint range.
+const BESIDE_FOLD: f64 = 1e-3;
+/// How far beyond the setpoint range curves are followed, as a fraction of it: a fold just outside shapes the branch inside.
+const BEYOND_RANGE: f64 = 0.25;
+
+/// All rest states of a rod over its setpoint range.
+#[derive(Clone, Debug)]
+pub struct RestStates {
+    /// The rod.
+    pub rod: Rod,
+    /// The rod in the number of modes found sufficient.
+    pub modal: ModalRod,
+    /// Branches that reach into the setpoint range, by base curvature.
+    pub branches: Vec<Branch>,
+    /// Folds within the setpoint range, by setpoint.
+    pub folds: Vec<Fold>,
+    /// Largest distance of a rest state from its exact counterpart at the audit setpoints.
+    pub distance: Distance,
+    /// Setpoints at which the list was compared with the shooting's.
+    pub audited: usize,
+    /// Rest states solved and classified on the way, for the benchmark.
+    pub solved: usize,
+    /// The exact rest curve it was audited against.
+    pub shooting: Shooting,
+}
+
+/// How far rest states are from their exact counterparts.
+#[derive(Clone, Copy, Debug, Default, PartialEq)]
+pub struct Distance {
+    /// Largest difference of mean or tip angles, and of fold setpoints that are angles (rad).
+    pub angle_rad: f64,
+    /// Largest difference of couples, and of fold setpoints that are couples (m g L).
+    pub couple: f64,
+}
+
+impl Distance {
+    fn widen(&mut self, angle_rad: f64, couple: f64) {
+        self.angle_rad = self.angle_rad.max(angle_rad.abs());
+        self.couple = self.couple.max(couple.abs());
+    }
+}
+
+/// Why no certified list of rest states came about.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum RestStatesError {
+    /// More than [`MOST_MODES`] curvature modes would be needed.
+    TooSoft {
+        /// Dimensionless bending stiffness.
+        gamma: f64,
+    },
+    /// The list differs from what shooting from the base finds.
+    AuditFailed {
+        /// Where (rad or N m).
+        setpoint: f64,
+        /// Rest states in the list.
+        listed: usize,
+        /// Rest states by shooting.
+        shot: usize,
+    },
+    /// The indices do not sum to one.
+    DegreeSum {
+        /// Where (rad or N m).
+        setpoint: f64,
+        /// The sum of (-1)^index found.
+        sum: i32,
+    },
+    /// A curve could not be followed.
+    CurveLost {
+        /// Where (rad or N m).
+        setpoint: f64,
+    },
+    /// No way down from a pass was found.
+    PassWithoutWells {
+        /// Where (rad or N m).
+        setpoint: f64,
+    },
+}
+
+impl fmt::Display for RestStatesError {
+    fn fmt(&self, f: &mut fmt::Formatter) -> fmt::Result {
+        match self {
+            Self::TooSoft { gamma } => write!(
+                f,
+                "too soft to tabulate: gamma = B/(m g L^2) = {gamma:.5}; {MOST_MODES} curvature modes do not reach the accuracy \
+                 asked. Stiffen the spine, lighten the arm, narrow the setpoint range or ask for less accuracy"
+            ),
+            Self::AuditFailed { setpoint, listed, shot } => write!(
+                f,
+                "audit failed at setpoint {setpoint:.6} (rad or N m): {listed} rest states listed, shooting from the base finds \
+                 {shot}"
+            ),
+            Self::DegreeSum { setpoint, sum } => write!(
+                f,
+                "rest states incomplete at setpoint {setpoint:.6} (rad or N m): the sum of (-1)^index is {sum}, must be 1"
+            ),
+            Self::CurveLost { setpoint } => {
+                write!(f, "a curve of rest states could not be followed past setpoint {setpoint:.6} (rad or N m)")
+            }
+            Self::PassWithoutWells { setpoint } => write!(
+                f,
+                "at setpoint {setpoint:.6} (rad or N m) no way down from a pass to the wells it joins was found"
+            ),
+        }
+    }
+}
+
+impl std::error::Error for RestStatesError {}
+
+impl RestStates {
+    /// Finds all rest states of `rod` over its setpoint range. The number of modes rises until none is further than a quarter
+    /// of `accuracy` from its exact counterpart.
+    ///
+    /// # Errors
+    /// See [`RestStatesError`]: nothing is returned that was not certified.
+    pub fn find(rod: &Rod, accuracy: &Accuracy, gamma: f64) -> Result<Self, RestStatesError> {
+        let [lo, hi] = rod.setpoints;
+        let beyond = BEYOND_RANGE * (hi - lo);
+        let outer = [lo - beyond, hi + beyond];
+        let allowed = Distance {
+            angle_rad: 0.25 * accuracy.angle_rad,
+            couple: 0.25 * accuracy.couple_fraction,
+        };
+        let shooting = Shooting::scan(rod, outer, 0.05 * allowed.angle_rad.min(allowed.couple).min(1e-5));
+        let starts = two_coordinate_starts(rod);
+        let exact: Vec<(f64, Vec<Shot>)> =
+            spread(rod.setpoints, AUDIT_SETPOINTS).map(|x| (x, shooting.rest_states(x))).collect();
+        let mut solved = 0;
+        for n in FEWEST_MODES..=MOST_MODES {
+            let modal = ModalRod::new(rod, n);
+            let mut search = Search { rod, shooting: &shooting, solver: Solver::new(&modal), outer, branches: vec![], folds: vec![] };
+            let distance = search.list_and_compare(&starts, &exact);
+            solved += search.solver.solved;
+            let Ok(distance) = distance else { continue };
+            if distance.angle_rad > allowed.angle_rad || distance.couple > allowed.couple {
+                continue;
+            }
+            let audited = search.certify()?;
+            solved += search.solver.solved;
+            let Search { mut branches, mut folds, .. } = search;
+            branches.retain(|b| b.to() > lo && b.from() < hi);
+            folds.retain(|f| (lo..=hi).contains(&f.point.setpoint));
+            branches.sort_by(|a, b| a.middle_base_curvature().total_cmp(&b.middle_base_curvature()));
+            folds.sort_by(|a, b| a.point.setpoint.total_cmp(&b.point.setpoint));
+            return Ok(Self { rod: rod.clone(), modal, branches, folds, distance, audited, solved, shooting });
+        }
+        Err(RestStatesError::TooSoft { gamma })
+    }
+
+    /// Every rest state at `setpoint` (dimensionless, within the range), by base curvature, with its branch number.
+    ///
+    /// # Errors
+    /// [`RestStatesError::DegreeSum`] when their indices do not sum to one.
+    pub fn at(&self, solver: &mut Solver, setpoint: f64) -> Result<Vec<(usize, RestPoint)>, RestStatesError> {
+        states_at(&self.rod, &self.branches, solver, setpoint)
+    }
+}
+
+/// Rest states of `branches` at `setpoint` with their branch numbers, by base curvature; the degree sum is checked.
+fn states_at(
+    rod: &Rod,
+    branches: &[Branch],
+    solver: &mut Solver,
+    setpoint: f64,
+) -> Result<Vec<(usize, RestPoint)>, RestStatesError> {
+    let lost = || RestStatesError::CurveLost { setpoint: rod.setpoint_si(setpoint) };
+    let mut states = Vec::new();
+    for (number, branch) in branches.iter().enumerate() {
+        if branch.covers(setpoint) {
+            states.push((number, branch.state_at(solver, setpoint).ok_or_else(lost)?));
+        }
+    }
+    states.sort_by(|a, b| a.1.base_curvature().total_cmp(&b.1.base_curvature()));
+    let sum = degree_sum(states.iter().map(|s| s.1.index));
+    if sum == 1 {
+        Ok(states)
+    } else {
+        Err(RestStatesError::DegreeSum { setpoint: rod.setpoint_si(setpoint), sum })
+    }
+}
+
+/// `sum (-1)^index`, which is 1 over all rest states of one setpoint (Poincare-Hopf; the energy grows at infinity).
+pub fn degree_sum(indices: impl Iterator<Item = usize>) -> i32 {
+    indices.map(|index| if index % 2 == 0 { 1 } else { -1 }).sum()
+}
+
+/// Rest states of the two-coordinate arm at the range's ends and between: where curves are first looked for.
+fn two_coordinate_starts(rod: &Rod) -> Vec<(f64, [f64; 2])> {
+    let modal = ModalRod::new(rod, 2);
+    spread(rod.setpoints, 9)
+        .flat_map(|setpoint| {
+            two_coordinate::rest_states(&modal, setpoint).into_iter().map(move |root| (setpoint, root.c))
+        })
+        .collect()
+}
+
+/// `count` setpoints spread evenly over `range`, ends included.
+fn spread(range: [f64; 2], count: usize) -> impl Iterator<Item = f64> {
+    (0..count).map(move |k| {
+        let x = k as f64 / (count - 1) as f64;
+        range[0] * (1.0 - x) + range[1] * x
+    })
+}
+
+/// The search with one number of modes.
+struct Search<'a> {
+    rod: &'a Rod,
+    shooting: &'a Shooting,
+    solver: Solver<'a>,
+    outer: [f64; 2],
+    branches: Vec<Branch>,
+    folds: Vec<Fold>,
+}
+
+impl Search<'_> {
+    /// Lists the branches from the two-coordinate starts, adds those that only shooting shows, and measures the distance of
+    /// all from the exact rest states.
+    fn list_and_compare(
+        &mut self,
+        starts: &[(f64, [f64; 2])],
+        exact: &[(f64, Vec<Shot>)],
+    ) -> Result<Distance, RestStatesError> {
+        for &(setpoint, c) in starts {
+            let mut guess = c.to_vec();
+            guess.resize(self.solver.modes(), 0.0);
+            if let Some(point) = self.solver.at_setpoint(&guess, setpoint) {
+                self.add_curve(&point)?;
+            }
+        }
+        let mut distance = Distance::default();
+        for &(setpoint, ref shots) in exact {
+            if self.listed_at(setpoint) != shots.len() {
+                for shot in shots {
+                    let guess = project(&self.shooting.curvatures(shot.base_curvature), self.solver.modes());
+                    if let Some(point) = self.solver.at_setpoint(&guess, setpoint) {
+                        self.add_curve(&point)?;
+                    }
+                }
+            }
+            let states = self.compare(setpoint, shots)?;
+            for (state, shot) in states.iter().zip(shots) {
+                let angle = (state.mean_angle() - shot.mean_angle)
+                    .abs()
+                    .max((state.tip_angle() - shot.tip_angle).abs());
+                distance.widen(angle, state.couple - shot.couple);
+            }
+        }
+        for (fold, exact) in self.matched_folds()? {
+            let setpoint_off = fold.setpoint - exact.setpoint;
+            let angle = fold.mean_angle() - exact.mean_angle;
+            match self.rod.held {
+                Held::TipAngle => distance.widen(angle.abs().max(setpoint_off.abs()), fold.couple - exact.couple),
+                Held::TipCouple => distance.widen(angle, setpoint_off),
+            }
+        }
+        Ok(distance)
+    }
+
+    /// Audits the finished list at setpoints not used to make it, and on both sides of every fold.
+    ///
+    /// Returns the number of audited setpoints.
+    fn certify(&mut self) -> Result<usize, RestStatesError> {
+        let [lo, hi] = self.rod.setpoints;
+        let between = 0.5 * (hi - lo) / (AUDIT_SETPOINTS - 1) as f64;
+        let mut setpoints: Vec<f64> = spread([lo + between, hi - between], AUDIT_SETPOINTS - 1).collect();
+        let beside = BESIDE_FOLD * (hi - lo);
+        for fold in &self.folds {
+            setpoints.extend([fold.point.setpoint - beside, fold.point.setpoint + beside]);
+        }
+        setpoints.retain(|s| (lo..=hi).contains(s));
+        for &setpoint in &setpoints {
+            self.compare(setpoint, &self.shooting.rest_states(setpoint))?;
+        }
+        Ok(AUDIT_SETPOINTS + setpoints.len())
+    }
+
+    /// The listed rest states at `setpoint`, when number and indices agree with the shooting's.
+    fn compare(&mut self, setpoint: f64, shots: &[Shot]) -> Result<Vec<RestPoint>, RestStatesError> {
+        let states: Vec<RestPoint> =
+            states_at(self.rod, &self.branches, &mut self.solver, setpoint)?.into_iter().map(|s| s.1).collect();
+        let agree = states.len() == shots.len() && states.iter().zip(shots).all(|(a, b)| a.index == b.index);
+        if agree {
+            Ok(states)
+        } else {
+            Err(RestStatesError::AuditFailed {
+                setpoint: self.rod.setpoint_si(setpoint),
+                listed: states.len(),
+                shot: shots.len(),
+            })
+        }
+    }
+
+    fn listed_at(&self, setpoint: f64) -> usize {
+        self.branches.iter().filter(|b| b.covers(setpoint)).count()
+    }
+
+    /// Follows the curve through `point` unless it is already listed.
+    fn add_curve(&mut self, point: &RestPoint) -> Result<(), RestStatesError> {
+        for branch in self.branches.iter().filter(|b| b.index == point.index && b.covers(point.setpoint)) {
+            if let Some(known) = branch.state_at(&mut self.solver, point.setpoint) {
+                let apart = known.c.iter().zip(&point.c).map(|(a, b)| (a - b).abs()).fold(0.0, f64::max);
+                if apart < 1e-6 {
+                    return Ok(());
+                }
+            }
+        }
+        let (branches, folds) = self
+            .solver
+            .follow(point, self.outer)
+            .map_err(|setpoint| RestStatesError::CurveLost { setpoint: self.rod.setpoint_si(setpoint) })?;
+        self.branches.extend(branches);
+        self.folds.extend(folds);
+        Ok(())
+    }
+
+    /// Folds within the setpoint range beside their exact counterparts.
+    fn matched_folds(&self) -> Result<Vec<(RestPoint, Shot)>, RestStatesError> {
+        let [lo, hi] = self.rod.setpoints;
+        let mut listed: Vec<&Fold> =
+            self.folds.iter().filter(|f| (lo..=hi).contains(&f.point.setpoint)).collect();
+        listed.sort_by(|a, b| a.point.base_curvature().total_cmp(&b.point.base_curvature()));
+        let exact: Vec<&Shot> =
+            self.shooting.folds().iter().filter(|f| (lo..=hi).contains(&f.setpoint)).collect();
+        if listed.len() != exact.len() {
+            let setpoint = listed.first().map_or(lo, |f| f.point.setpoint);
+            return Err(RestStatesError::AuditFailed {
+                setpoint: self.rod.setpoint_si(setpoint),
+                listed: listed.len(),
+                shot: exact.len(),
+            });
+        }
+        Ok(listed.iter().zip(exact).map(|(fold, shot)| (fold.point.clone(), *shot)).collect())
+    }
+}
+
+/// Legendre coefficients of a curvature given at arc lengths (trapezoids: it only has to start Newton).
+fn project(curvatures: &[(f64, f64)], n: usize) -> Vec<f64> {
+    let mut c = vec![0.0; n];
+    for pair in curvatures.windows(2) {
+        let width = pair[1].0 - pair[0].0;
+        for (s, curvature) in pair {
+            for (i, p) in modes::legendre(n, 2.0 * s - 1.0).iter().take(n).enumerate() {
+                c[i] += 0.5 * width * curvature * p * (2 * i + 1) as f64;
+            }
+        }
+    }
+    c
+}
