@@ -79,15 +79,15 @@ fn float(out: &mut dyn Write, value: f32) -> fmt::Result {
     if size.is_infinite() {
         return out.write_str("infinity");
     }
-    // An f32 is between 1e-45 and 1e39, which bounds both loops.
+    // An f32 is between 1e-45 and 1e39, which bounds both loops. They stop at what five decimals round to 10 or 1.
     let (mut up, mut down) = (0, 0);
     if size >= LARGE {
-        while size >= 10.0 && up < 50 {
+        while size >= 9.999_995 && up < 50 {
             size /= 10.0;
             up += 1;
         }
     } else if size < SMALL && size > 0.0 {
-        while size < 1.0 && down < 50 {
+        while size < 0.999_995 && down < 50 {
             size *= 10.0;
             down += 1;
         }

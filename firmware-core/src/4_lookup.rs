@@ -24,13 +24,13 @@ pub struct RestState {
     pub branch: u8,
     /// Morse index: 0 stable, 1 a pass between two wells.
     pub index: u8,
-    /// Mean angle q1 [rad].
+    /// Mean angle q1 (rad).
     pub mean_angle_rad: f32,
-    /// Tip angle q0 [rad].
+    /// Tip angle q0 (rad).
     pub tip_angle_rad: f32,
-    /// Tip couple tau that holds it [N m].
+    /// Tip couple tau that holds it (N m).
     pub couple_n_m: f32,
-    /// Elastic and gravity energy [J], without the work of the drive.
+    /// Elastic and gravity energy (J), without the work of the drive.
     pub energy_j: f32,
     /// What only stable states have.
     pub well: Option<Well>,
@@ -39,19 +39,19 @@ pub struct RestState {
 /// What the table holds of stable rest states only.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize)]
 pub struct Well {
-    /// Tip position along x [m].
+    /// Tip position along x (m).
     pub tip_x_m: f32,
-    /// Tip position along y [m].
+    /// Tip position along y (m).
     pub tip_y_m: f32,
-    /// Restoring stiffness along the mean angle [N m/rad].
+    /// Restoring stiffness along the mean angle (N m/rad).
     pub restoring_n_m_per_rad: f32,
-    /// Energy to the lowest pass out of the well at the same setpoint, the work of the drive taken into account [J],
+    /// Energy to the lowest pass out of the well at the same setpoint, the work of the drive taken into account (J),
     /// >= 0; `None` when there is no pass at this setpoint.
     pub barrier_j: Option<f32>,
 }
 
 impl RestState {
-    /// What the drive does not let go of: the energy that rest states at one setpoint are compared by [J]. U when the
+    /// What the drive does not let go of: the energy that rest states at one setpoint are compared by (J). U when the
     /// tip is held, U - tau q0 when a couple is applied.
     pub fn potential_j(&self, drive: Drive) -> f32 {
         match drive {

@@ -15,9 +15,9 @@ use crate::words::Words;
 /// A measured pose of the arm.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Pose {
-    /// Tip angle q0 [rad].
+    /// Tip angle q0 (rad).
     pub tip_angle_rad: f32,
-    /// Mean angle q1 [rad].
+    /// Mean angle q1 (rad).
     pub mean_angle_rad: f32,
 }
 
@@ -26,11 +26,11 @@ pub struct Pose {
 pub struct Seat {
     /// The stable branch.
     pub branch: u8,
-    /// Measured minus rest mean angle [rad].
+    /// Measured minus rest mean angle (rad).
     pub off_rad: f32,
-    /// Measured minus rest tip angle [rad].
+    /// Measured minus rest tip angle (rad).
     pub tip_off_rad: f32,
-    /// Distance in mean angle to the nearest pass out of the well [rad], >= 0; `None` when there is no pass at this
+    /// Distance in mean angle to the nearest pass out of the well (rad), >= 0; `None` when there is no pass at this
     /// setpoint.
     pub to_pass_rad: Option<f32>,
 }
@@ -56,7 +56,7 @@ pub enum PoseError {
     },
     /// The pose may belong to either of two wells.
     Unclear {
-        /// The measured mean angle [rad].
+        /// The measured mean angle (rad).
         mean_angle_rad: f32,
         /// The well below, `None` when the pose lies below all wells.
         lower: Option<u8>,

@@ -13,6 +13,8 @@ mod checking;
 mod limits;
 #[path = "1_arm_file/1_message.rs"]
 mod message;
+#[path = "1_arm_file/6_safety.rs"]
+mod safety;
 #[path = "1_arm_file/5_tests.rs"]
 #[cfg(test)]
 mod tests;
@@ -21,6 +23,7 @@ mod written;
 
 pub use checking::{parse, read};
 pub use message::ArmFileError;
+pub use safety::{KeepOut, Region, Require, Swing, Tolerance};
 
 /// Standard gravity (m/s2), exact by convention (3rd General Conference on Weights and Measures, 1901).
 pub const STANDARD_GRAVITY_M_S2: f64 = 9.806_65;
@@ -127,6 +130,9 @@ pub struct Lump {
 pub struct Payload {
     /// Mass (kg), >= 0.
     pub mass_kg: f64,
+    /// Lightest and heaviest the tip may carry (kg), >= 0; contains `mass_kg`. Both are `mass_kg` when
+    /// the arm file says nothing.
+    pub range_kg: [f64; 2],
 }
 
 /// How the base is mounted.
@@ -134,6 +140,8 @@ pub struct Payload {
 pub struct Base {
     /// Tilt of the base tangent from the upward vertical (rad); positive turns towards +x.
     pub tilt_rad: f64,
+    /// How far the tilt may be off, either way (rad), >= 0; 0 when the arm file says nothing.
+    pub tolerance_rad: f64,
 }
 
 /// The two tendons.
@@ -190,6 +198,14 @@ pub struct Arm {
     pub drive: Drive,
     /// Accuracy asked of the table.
     pub accuracy: Accuracy,
+    /// How far the real arm may be from this one, besides payload and base tilt.
+    pub tolerance: Tolerance,
+    /// The reserves of a usable rest state.
+    pub require: Require,
+    /// Where no part of the arm may be.
+    pub keep_out: Vec<KeepOut>,
+    /// Limits of a swing to the other side; without it the arm never swings.
+    pub swing: Option<Swing>,
 }
 
 impl Arm {
@@ -212,6 +228,27 @@ impl Arm {
         let length_m = self.spine.length_m;
         self.mean_bending_stiffness_n_m2()
             / (self.total_mass_kg() * STANDARD_GRAVITY_M_S2 * length_m * length_m)
+    }
+
+    /// The one arm that carries `payload_kg`, with the stiffness times `stiffness_factor` (> 0) and
+    /// the base turned by `tilt_change_rad`: a corner of the tolerances, or beyond them.
+    ///
+    /// Nothing of it varies any more: its payload range is `payload_kg` alone and its tolerances are 0.
+    /// Everything else is as in `self`. The arguments are not checked against the tolerances.
+    pub fn varied(&self, payload_kg: f64, stiffness_factor: f64, tilt_change_rad: f64) -> Self {
+        let mut arm = self.clone();
+        arm.payload = Payload {
+            mass_kg: payload_kg,
+            range_kg: [payload_kg; 2],
+        };
+        arm.spine.bending_stiffness_n_m2 =
+            self.spine.bending_stiffness_n_m2.scaled(stiffness_factor);
+        arm.base = Base {
+            tilt_rad: self.base.tilt_rad + tilt_change_rad,
+            tolerance_rad: 0.0,
+        };
+        arm.tolerance = Tolerance::default();
+        arm
     }
 
     /// Tells arms apart: the first 8 bytes of SHA-256 over the checked values, name included.

@@ -48,14 +48,18 @@ impl Rod {
         let length_m = arm.spine.length_m;
         let mass_kg = arm.total_mass_kg();
         let energy_scale_j = mass_kg * STANDARD_GRAVITY_M_S2 * length_m;
-        let mut point_masses: Vec<_> =
-            arm.lumps.iter().map(|lump| (lump.at, lump.mass_kg / mass_kg)).collect();
+        let mut point_masses: Vec<_> = arm
+            .lumps
+            .iter()
+            .map(|lump| (lump.at, lump.mass_kg / mass_kg))
+            .collect();
         point_masses.push((1.0, arm.payload.mass_kg / mass_kg));
         let (held, setpoints) = match arm.drive {
             Drive::HeldTip { setpoints_rad } => (Held::TipAngle, setpoints_rad),
-            Drive::AppliedCouple { setpoints_n_m } => {
-                (Held::TipCouple, setpoints_n_m.map(|couple| couple / energy_scale_j))
-            }
+            Drive::AppliedCouple { setpoints_n_m } => (
+                Held::TipCouple,
+                setpoints_n_m.map(|couple| couple / energy_scale_j),
+            ),
         };
         Self {
             length_m,
@@ -63,7 +67,10 @@ impl Rod {
             tilt_rad: arm.base.tilt_rad,
             held,
             setpoints,
-            stiffness: arm.spine.bending_stiffness_n_m2.scaled(1.0 / (energy_scale_j * length_m)),
+            stiffness: arm
+                .spine
+                .bending_stiffness_n_m2
+                .scaled(1.0 / (energy_scale_j * length_m)),
             rest_curvature: arm.spine.rest_curvature_rad_m.scaled(length_m),
             mass_per_length: arm.spine.mass_per_length_kg_m.scaled(length_m / mass_kg),
             point_masses,
@@ -83,7 +90,12 @@ impl Rod {
     /// Fraction of the mass outboard of `s`, where `s` lies inside a panel whose far end is `panel_end` (point masses at
     /// either end of the panel count as outboard of its inside exactly when they lie at or beyond the far end).
     pub fn outboard(&self, s: f64, panel_end: f64) -> f64 {
-        let points: f64 = self.point_masses.iter().filter(|p| p.0 >= panel_end).map(|p| p.1).sum();
+        let points: f64 = self
+            .point_masses
+            .iter()
+            .filter(|p| p.0 >= panel_end)
+            .map(|p| p.1)
+            .sum();
         self.mass_per_length.integral_to_tip(s) + points
     }
 

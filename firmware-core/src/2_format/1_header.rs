@@ -13,26 +13,26 @@ pub enum Units {
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
 #[serde(rename_all = "kebab-case")]
 pub enum Drive {
-    /// Take-up controlled: the setpoint is the tip angle q0 [rad], its conjugate the hold couple tau [N m].
+    /// Take-up controlled: the setpoint is the tip angle q0 (rad), its conjugate the hold couple tau (N m).
     HeldTip,
-    /// Tension controlled: the setpoint is the tip couple tau [N m], its conjugate the tip angle q0 [rad].
+    /// Tension controlled: the setpoint is the tip couple tau (N m), its conjugate the tip angle q0 (rad).
     AppliedCouple,
 }
 
 /// Worst interpolation error of each tabulated quantity, measured by the generator against fresh solves. All >= 0.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct WorstError {
-    /// Of the mean angle [rad].
+    /// Of the mean angle (rad).
     pub mean_angle_rad: f32,
-    /// Of the tip angle [rad]; 0 when the tip is held, for then it is the setpoint.
+    /// Of the tip angle (rad); 0 when the tip is held, for then it is the setpoint.
     pub tip_angle_rad: f32,
-    /// Of the couple [N m]; 0 when the couple is applied.
+    /// Of the couple (N m); 0 when the couple is applied.
     pub couple_n_m: f32,
-    /// Of the energy [J].
+    /// Of the energy (J).
     pub energy_j: f32,
-    /// Of the tip position, either coordinate [m].
+    /// Of the tip position, either coordinate (m).
     pub tip_m: f32,
-    /// Of the restoring stiffness [N m/rad].
+    /// Of the restoring stiffness (N m/rad).
     pub restoring_n_m_per_rad: f32,
 }
 
@@ -41,7 +41,7 @@ pub struct WorstError {
 pub struct Deducted {
     /// From the ends of the stretches, in units of the setpoint (rad or N m).
     pub setpoint: f32,
-    /// From the maximum tension [N].
+    /// From the maximum tension (N).
     pub tension_n: f32,
 }
 
@@ -60,19 +60,19 @@ pub struct Header<'a> {
     pub modes: u8,
     /// Dimensionless stiffness B / (m g L^2), > 0.
     pub gamma: f32,
-    /// Length of the arm [m], > 0.
+    /// Length of the arm (m), > 0.
     pub length_m: f32,
-    /// Total mass, payload included [kg], > 0.
+    /// Total mass, payload included (kg), > 0.
     pub mass_kg: f32,
-    /// Energy scale m g L [J], > 0.
+    /// Energy scale m g L (J), > 0.
     pub energy_scale_j: f32,
-    /// Base tilt from the upward vertical [rad], within -pi..=pi.
+    /// Base tilt from the upward vertical (rad), within -pi..=pi.
     pub tilt_rad: f32,
-    /// Distance of either tendon from the centre line [m], > 0.
+    /// Distance of either tendon from the centre line (m), > 0.
     pub offset_m: f32,
-    /// Tension of the tendon that does not pull [N], within 0..=max_tension_n.
+    /// Tension of the tendon that does not pull (N), within 0..=max_tension_n.
     pub pretension_n: f32,
-    /// Largest allowed tension [N], > 0.
+    /// Largest allowed tension (N), > 0.
     pub max_tension_n: f32,
     /// Lowest tabulated setpoint (rad or N m).
     pub setpoint_lo: f32,

@@ -11,7 +11,7 @@ use crate::words::Words;
 /// Opens the part of the directory that belongs to one payload.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub struct SliceEntry {
-    /// Payload at the tip [kg], >= 0; increases from slice to slice.
+    /// Payload at the tip (kg), >= 0; increases from slice to slice.
     pub payload_kg: f32,
     /// Branches that follow, >= 1.
     pub branches: u8,

@@ -21,7 +21,7 @@ pub struct Contents<'a> {
 /// One slice: the arm with one payload.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct SliceContents<'a> {
-    /// Payload at the tip [kg].
+    /// Payload at the tip (kg).
     pub payload_kg: f32,
     /// The branches, at most 255; the passes among the first 32.
     pub branches: &'a [BranchContents<'a>],
@@ -85,7 +85,7 @@ pub enum WriteError {
     },
 }
 
-/// A sufficient buffer length for [`write`], in bytes.
+/// A sufficient buffer length for [`write()`], in bytes.
 pub fn buffer_len(contents: &Contents<'_>) -> usize {
     // Upper bounds of postcard records: every varint at its longest, every other field at its fixed width.
     const HEADER: usize = 160;

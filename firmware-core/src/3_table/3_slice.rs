@@ -9,7 +9,7 @@ use super::Limits;
 /// The arm with one payload: its branches and stretches.
 #[derive(Clone, Copy, Debug)]
 pub struct Slice<'a> {
-    /// Payload at the tip [kg].
+    /// Payload at the tip (kg).
     pub payload_kg: f32,
     limits: Limits,
     branch_count: u8,

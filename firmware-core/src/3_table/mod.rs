@@ -4,6 +4,8 @@
 mod check;
 #[path = "1_error.rs"]
 mod error;
+#[path = "4_message.rs"]
+mod message;
 #[path = "3_slice.rs"]
 mod slice;
 
@@ -20,15 +22,15 @@ use crate::format::{CRC_LEN, Drive, Header, PREFIX_LEN, take};
 pub struct Limits {
     /// What the setpoint is.
     pub drive: Drive,
-    /// Distance of either tendon from the centre line [m].
+    /// Distance of either tendon from the centre line (m).
     pub offset_m: f32,
-    /// Tension of the tendon that does not pull [N].
+    /// Tension of the tendon that does not pull (N).
     pub pretension_n: f32,
-    /// Largest allowed tension [N].
+    /// Largest allowed tension (N).
     pub max_tension_n: f32,
-    /// Part of the tension kept back for the interpolation error of the couple [N].
+    /// Part of the tension kept back for the interpolation error of the couple (N).
     pub deducted_tension_n: f32,
-    /// Worst interpolation error of the mean angle [rad].
+    /// Worst interpolation error of the mean angle (rad).
     pub mean_angle_error_rad: f32,
     /// Lowest tabulated setpoint (rad or N m).
     pub setpoint_lo: f32,

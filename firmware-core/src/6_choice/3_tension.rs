@@ -8,17 +8,17 @@ use crate::table::Limits;
 use crate::words::Word::{F, T};
 use crate::words::Words;
 
-/// Tensions to command [N]. Tendon A turns the tip towards +x.
+/// Tensions to command (N). Tendon A turns the tip towards +x.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize)]
 pub struct TensionPair {
-    /// Tension of tendon A [N].
+    /// Tension of tendon A (N).
     pub a_n: f32,
-    /// Tension of tendon B [N].
+    /// Tension of tendon B (N).
     pub b_n: f32,
 }
 
 impl TensionPair {
-    /// The pair for a tip couple [N m]: the pulling tendon carries the pretension plus couple / offset, the other
+    /// The pair for a tip couple (N m): the pulling tendon carries the pretension plus couple / offset, the other
     /// the pretension. Not checked against the maximum; see [`Self::allowed`].
     pub fn for_couple(couple_n_m: f32, limits: &Limits) -> Self {
         let pulling_n = limits.pretension_n + couple_n_m.abs() / limits.offset_m;
@@ -35,7 +35,7 @@ impl TensionPair {
         }
     }
 
-    /// The larger tension with the part kept back for interpolation added [N]: the one to hold against the maximum.
+    /// The larger tension with the part kept back for interpolation added (N): the one to hold against the maximum.
     pub fn worst_n(&self, limits: &Limits) -> f32 {
         let larger = if self.a_n > self.b_n {
             self.a_n

@@ -32,7 +32,9 @@ pub extern "C" fn _start() -> ! {
     exercise(black_box(BYTES.get(..len).unwrap_or(&[])));
     #[cfg(feature = "deliberate-panic")]
     black_box(BYTES[len]);
-    loop {}
+    loop {
+        core::hint::spin_loop();
+    }
 }
 
 /// Takes text and forgets it.

@@ -75,6 +75,46 @@ pub const ANGLE: Limits = limits("angle_deg", Above(0.0), To(5.0), "deg");
 /// Of m g L.
 pub const COUPLE: Limits = limits("couple_percent", Above(0.0), To(10.0), "percent");
 
+/// Both ends; together they contain the payload.
+pub const PAYLOAD_RANGE: Limits = limits("range_kg", From(0.0), To(200.0), "kg");
+/// A base known no better than this is not measured.
+pub const TILT_TOLERANCE: Limits = limits("tolerance_deg", From(0.0), To(45.0), "deg");
+/// Some stiffness must be left.
+pub const STIFFNESS_TOLERANCE: Limits = limits("stiffness_percent", From(0.0), To(90.0), "percent");
+/// Up to a blow that throws a person.
+pub const KNOCK: Limits = limits("knock_n_s", From(0.0), To(1000.0), "N s");
+/// As the payload itself.
+pub const PAYLOAD_RESERVE: Limits = limits("payload_reserve_kg", From(0.0), To(200.0), "kg");
+/// Together with the tolerance below 100, which is checked besides.
+pub const STIFFNESS_RESERVE: Limits = limits(
+    "stiffness_reserve_percent",
+    From(0.0),
+    Below(100.0),
+    "percent",
+);
+/// Held tip.
+pub const SETPOINT_RESERVE_DEG: Limits = limits("setpoint_reserve_deg", From(0.0), To(90.0), "deg");
+/// Applied couple.
+pub const SETPOINT_RESERVE_N_M: Limits = limits("setpoint_reserve_n_m", From(0.0), To(1e5), "N m");
+/// Below 1 the arm could not be held.
+pub const TENSION_FACTOR: Limits = limits("tension_factor", From(1.0), To(100.0), "");
+/// No longer than the longest arm.
+pub const CLEARANCE: Limits = limits("clearance_m", From(0.0), To(20.0), "m");
+/// Farther off no arm gets.
+pub const POINT: Limits = limits("point_m", From(-100.0), To(100.0), "m");
+/// Only its direction counts; not both 0, which is checked besides.
+pub const NORMAL: Limits = limits("normal", From(-1e6), To(1e6), "");
+/// As a point.
+pub const CENTRE: Limits = limits("centre_m", From(-100.0), To(100.0), "m");
+/// Up to a disc that looks straight to the arm.
+pub const RADIUS: Limits = limits("radius_m", Above(0.0), To(100.0), "m");
+/// Two turns.
+pub const TIP_TRAVEL: Limits = limits("max_tip_travel_deg", Above(0.0), To(720.0), "deg");
+/// Beyond it air drag, which is not modelled, rules the swing.
+pub const TIP_SPEED: Limits = limits("max_tip_speed_m_s", Above(0.0), To(100.0), "m/s");
+/// As the couple setpoints.
+pub const SWING_COUPLE: Limits = limits("max_couple_n_m", Above(0.0), To(1e5), "N m");
+
 /// Stiffness against weight, `B / (m g L^2)`; outside it some unit is wrong.
 ///
 /// The low end is far below what can be tabulated, so that a soft arm is still reported as soft.

@@ -2,7 +2,7 @@
 //!
 //! Every key is optional here, so that a missing one is reported in the words of `4_checking.rs`.
 
-use std::fmt;
+use std::{fmt, marker::PhantomData};
 
 use serde::{
     Deserialize, Deserializer,
@@ -20,12 +20,17 @@ pub struct WrittenArm {
     pub name: Written<String>,
     pub spine: Written<WrittenSpine>,
     #[serde(default)]
-    pub lump: Lumps,
+    pub lump: Repeated<WrittenLump>,
     pub payload: Written<WrittenPayload>,
     pub base: Written<WrittenBase>,
     pub tendons: Written<WrittenTendons>,
     pub drive: Written<WrittenDrive>,
     pub accuracy: Written<WrittenAccuracy>,
+    pub tolerance: Written<WrittenTolerance>,
+    pub require: Written<WrittenRequire>,
+    #[serde(default)]
+    pub keep_out: Repeated<WrittenKeepOut>,
+    pub swing: Written<WrittenSwing>,
 }
 
 #[derive(Deserialize)]
@@ -54,12 +59,14 @@ pub struct WrittenLump {
 #[serde(deny_unknown_fields, expecting = "a section, [payload] with mass_kg")]
 pub struct WrittenPayload {
     pub mass_kg: Written<Number>,
+    pub range_kg: Written<Ends>,
 }
 
 #[derive(Deserialize)]
 #[serde(deny_unknown_fields, expecting = "a section, [base] with tilt_deg")]
 pub struct WrittenBase {
     pub tilt_deg: Written<Number>,
+    pub tolerance_deg: Written<Number>,
 }
 
 #[derive(Deserialize)]
@@ -88,9 +95,86 @@ pub struct WrittenAccuracy {
     pub couple_percent: Written<Number>,
 }
 
-/// Any number of `[[lump]]` sections.
-#[derive(Default)]
-pub struct Lumps(pub Vec<Spanned<WrittenLump>>);
+#[derive(Deserialize)]
+#[serde(
+    deny_unknown_fields,
+    expecting = "a section, [tolerance] with stiffness_percent"
+)]
+pub struct WrittenTolerance {
+    pub stiffness_percent: Written<Number>,
+}
+
+#[derive(Default, Deserialize)]
+#[serde(deny_unknown_fields, expecting = "a section, [require] with its keys")]
+pub struct WrittenRequire {
+    pub knock_n_s: Written<Number>,
+    pub payload_reserve_kg: Written<Number>,
+    pub stiffness_reserve_percent: Written<Number>,
+    pub setpoint_reserve_deg: Written<Number>,
+    pub setpoint_reserve_n_m: Written<Number>,
+    pub tension_factor: Written<Number>,
+    pub clearance_m: Written<Number>,
+}
+
+#[derive(Deserialize)]
+#[serde(
+    deny_unknown_fields,
+    expecting = "a section, [[keep_out]] with name and half_plane or disc"
+)]
+pub struct WrittenKeepOut {
+    pub name: Written<String>,
+    pub half_plane: Written<WrittenHalfPlane>,
+    pub disc: Written<WrittenDisc>,
+}
+
+#[derive(Deserialize)]
+#[serde(
+    deny_unknown_fields,
+    expecting = "{ point_m = [x, y], normal = [x, y] }"
+)]
+pub struct WrittenHalfPlane {
+    pub point_m: Written<Point>,
+    pub normal: Written<Point>,
+}
+
+#[derive(Deserialize)]
+#[serde(deny_unknown_fields, expecting = "{ centre_m = [x, y], radius_m = r }")]
+pub struct WrittenDisc {
+    pub centre_m: Written<Point>,
+    pub radius_m: Written<Number>,
+}
+
+#[derive(Deserialize)]
+#[serde(deny_unknown_fields, expecting = "a section, [swing] with its keys")]
+pub struct WrittenSwing {
+    pub max_tip_travel_deg: Written<Number>,
+    pub max_tip_speed_m_s: Written<Number>,
+    pub max_couple_n_m: Written<Number>,
+}
+
+/// Any number of sections in double brackets.
+pub struct Repeated<T>(pub Vec<Spanned<T>>);
+
+impl<T> Default for Repeated<T> {
+    fn default() -> Self {
+        Self(Vec::new())
+    }
+}
+
+/// A section that may be repeated.
+pub trait Repeatable {
+    /// What is allowed, when something else is found.
+    const EXPECTED: &'static str;
+}
+
+impl Repeatable for WrittenLump {
+    const EXPECTED: &'static str = "[[lump]] sections (double brackets), each with at and mass_kg";
+}
+
+impl Repeatable for WrittenKeepOut {
+    const EXPECTED: &'static str =
+        "[[keep_out]] sections (double brackets), each with name and half_plane or disc";
+}
 
 /// A number; whole numbers need no decimal point.
 #[derive(Clone, Copy)]
@@ -112,6 +196,12 @@ pub struct Knot {
 pub struct Ends {
     pub low: Spanned<Number>,
     pub high: Spanned<Number>,
+}
+
+/// `[x, y]`.
+pub struct Point {
+    pub x: Spanned<Number>,
+    pub y: Spanned<Number>,
 }
 
 /// Whole numbers and decimals by the same door.
@@ -207,22 +297,30 @@ impl<'de> Deserialize<'de> for Ends {
     }
 }
 
-impl<'de> Deserialize<'de> for Lumps {
+impl<'de> Deserialize<'de> for Point {
     fn deserialize<D: Deserializer<'de>>(from: D) -> Result<Self, D::Error> {
-        struct LumpsVisitor;
-        impl<'de> Visitor<'de> for LumpsVisitor {
-            type Value = Lumps;
+        let expected = "two numbers [x, y]";
+        let [x, y] = from.deserialize_any(PairVisitor { expected })?;
+        Ok(Self { x, y })
+    }
+}
+
+impl<'de, T: Repeatable + Deserialize<'de>> Deserialize<'de> for Repeated<T> {
+    fn deserialize<D: Deserializer<'de>>(from: D) -> Result<Self, D::Error> {
+        struct RepeatedVisitor<T>(PhantomData<T>);
+        impl<'de, T: Repeatable + Deserialize<'de>> Visitor<'de> for RepeatedVisitor<T> {
+            type Value = Repeated<T>;
             fn expecting(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-                f.write_str("[[lump]] sections (double brackets), each with at and mass_kg")
+                f.write_str(T::EXPECTED)
             }
-            fn visit_seq<A: SeqAccess<'de>>(self, mut seq: A) -> Result<Lumps, A::Error> {
-                let mut lumps = Vec::new();
-                while let Some(lump) = seq.next_element()? {
-                    lumps.push(lump);
+            fn visit_seq<A: SeqAccess<'de>>(self, mut seq: A) -> Result<Repeated<T>, A::Error> {
+                let mut sections = Vec::new();
+                while let Some(section) = seq.next_element()? {
+                    sections.push(section);
                 }
-                Ok(Lumps(lumps))
+                Ok(Repeated(sections))
             }
         }
-        from.deserialize_any(LumpsVisitor)
+        from.deserialize_any(RepeatedVisitor(PhantomData))
     }
 }

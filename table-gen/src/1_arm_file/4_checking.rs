@@ -9,9 +9,12 @@ use super::{
     limits::{self, Limits},
     written::{
         Ends, Number, Quantity, Written, WrittenAccuracy, WrittenArm, WrittenDrive, WrittenLump,
-        WrittenSpine, WrittenTendons,
+        WrittenPayload, WrittenSpine, WrittenTendons,
     },
 };
+
+#[path = "4_checking/1_safety.rs"]
+mod safety;
 
 /// An arm file is a page of text; what is longer is some other file (bytes).
 const LONGEST_FILE: u64 = 1 << 20;
@@ -125,14 +128,24 @@ impl Page<'_> {
         name: &'s str,
         written: &'s Written<T>,
     ) -> Result<(Section<'s>, &'s T), ArmFileError> {
-        let Some(section) = written else {
+        let Some(found) = self.optional(name, written) else {
             let end = self.text.trim_end().len();
             let what = format!("section [{name}] is missing");
             let allowed = "sections [spine], [payload], [base], [tendons] and [drive] must be there; \
-                           [[lump]] and [accuracy] may";
+                           [[lump]], [accuracy], [tolerance], [require], [[keep_out]] and [swing] may";
             return Err(self.fault(end..end, &what, "the file ends here", allowed));
         };
-        Ok((
+        Ok(found)
+    }
+
+    /// A section that may be missing.
+    fn optional<'s, T>(
+        &'s self,
+        name: &'s str,
+        written: &'s Written<T>,
+    ) -> Option<(Section<'s>, &'s T)> {
+        let section = written.as_ref()?;
+        Some((
             Section {
                 page: self,
                 name,
@@ -147,19 +160,23 @@ impl Page<'_> {
         let spine = self.spine(written)?;
         let lumps = self.lumps(written)?;
         let (section, payload) = self.section("payload", &written.payload)?;
-        let payload = Payload {
-            mass_kg: section.number(&limits::MASS, &payload.mass_kg)?,
-        };
+        let payload = section.payload(payload)?;
         let (section, base) = self.section("base", &written.base)?;
-        let tilt_deg = section.number(&limits::TILT, &base.tilt_deg)?;
+        let base = Base {
+            tilt_rad: section.number(&limits::TILT, &base.tilt_deg)?.to_radians(),
+            tolerance_rad: section
+                .number_or(0.0, &limits::TILT_TOLERANCE, &base.tolerance_deg)?
+                .to_radians(),
+        };
         let (section, tendons) = self.section("tendons", &written.tendons)?;
         let tendons = section.tendons(tendons)?;
         let (section, drive) = self.section("drive", &written.drive)?;
         let drive = section.drive(drive)?;
         let accuracy = self.accuracy(&written.accuracy)?;
-        let base = Base {
-            tilt_rad: tilt_deg.to_radians(),
-        };
+        let tolerance = self.tolerance(&written.tolerance)?;
+        let require = self.require(&written.require, &drive, &tolerance)?;
+        let keep_out = self.keep_outs(&written.keep_out, require.clearance_m)?;
+        let swing = self.swing(&written.swing)?;
         let arm = Arm {
             name,
             spine,
@@ -169,6 +186,10 @@ impl Page<'_> {
             tendons,
             drive,
             accuracy,
+            tolerance,
+            require,
+            keep_out,
+            swing,
         };
         self.weight(written, &arm)?;
         Ok(arm)
@@ -180,25 +201,7 @@ impl Page<'_> {
             name: "",
             header: 0..0,
         };
-        let allowed = format!(
-            "a text in quotes of 1 to {} characters on one line, without control characters",
-            limits::LONGEST_NAME
-        );
-        let name = top.need("name", &allowed, written)?;
-        let text = name.get_ref().trim();
-        let fits = !text.is_empty()
-            && text.chars().count() <= limits::LONGEST_NAME
-            && !text.chars().any(char::is_control);
-        if fits {
-            Ok(text.to_owned())
-        } else {
-            Err(self.fault(
-                name.span(),
-                "name is not allowed",
-                &self.found(name.span()),
-                &allowed,
-            ))
-        }
+        top.name(written)
     }
 
     fn spine(&self, written: &WrittenArm) -> Result<Spine, ArmFileError> {
@@ -235,19 +238,10 @@ impl Page<'_> {
 
     fn accuracy(&self, written: &Written<WrittenAccuracy>) -> Result<Accuracy, ArmFileError> {
         let (mut angle_deg, mut couple_percent) = (DEFAULT_ANGLE_DEG, DEFAULT_COUPLE_PERCENT);
-        if let Some(accuracy) = written {
-            let section = Section {
-                page: self,
-                name: "accuracy",
-                header: accuracy.span(),
-            };
-            let accuracy = accuracy.get_ref();
-            if accuracy.angle_deg.is_some() {
-                angle_deg = section.number(&limits::ANGLE, &accuracy.angle_deg)?;
-            }
-            if accuracy.couple_percent.is_some() {
-                couple_percent = section.number(&limits::COUPLE, &accuracy.couple_percent)?;
-            }
+        if let Some((section, accuracy)) = self.optional("accuracy", written) {
+            angle_deg = section.number_or(angle_deg, &limits::ANGLE, &accuracy.angle_deg)?;
+            couple_percent =
+                section.number_or(couple_percent, &limits::COUPLE, &accuracy.couple_percent)?;
         }
         Ok(Accuracy {
             angle_rad: angle_deg.to_radians(),
@@ -261,6 +255,10 @@ impl Page<'_> {
             .payload
             .as_ref()
             .and_then(|p| p.get_ref().mass_kg.as_ref());
+        let range = written
+            .payload
+            .as_ref()
+            .and_then(|p| p.get_ref().range_kg.as_ref());
         let stiffness = written
             .spine
             .as_ref()
@@ -271,13 +269,35 @@ impl Page<'_> {
             let allowed = "more than 0 kg in total";
             return Err(self.fault(span.clone(), what, &self.found(span), allowed));
         }
-        let gamma = arm.gamma();
-        if !limits::GAMMA.allow(gamma) {
+        let [lightest_kg, heaviest_kg] = arm.payload.range_kg;
+        if arm.varied(lightest_kg, 1.0, 0.0).total_mass_kg() <= 0.0 {
+            let span = range.map_or(0..0, |range| range.get_ref().low.span());
+            let what = "with the lightest payload the arm has no mass: spine, lumps and payload add up to 0 kg";
+            let allowed = "more than 0 kg in total";
+            return Err(self.fault(span.clone(), what, &self.found(span), allowed));
+        }
+        let loss = arm.tolerance.stiffness_fraction;
+        let corners = [
+            (arm.payload.mass_kg, 1.0),
+            (heaviest_kg, 1.0 - loss),
+            (lightest_kg, 1.0 + loss),
+        ];
+        for (payload_kg, stiffness_factor) in corners {
+            let corner = arm.varied(payload_kg, stiffness_factor, 0.0);
+            let gamma = corner.gamma();
+            if limits::GAMMA.allow(gamma) {
+                continue;
+            }
             let span = stiffness.map_or(0..0, Spanned::span);
             let what = format!(
-                "stiffness does not go with mass {:.3e} kg and length {} m: gamma = B / (m g L^2) is {gamma:.3e}",
-                arm.total_mass_kg(),
-                arm.spine.length_m
+                "stiffness does not go with mass {:.3e} kg and length {} m: gamma = B / (m g L^2) is {gamma:.3e}{}",
+                corner.total_mass_kg(),
+                arm.spine.length_m,
+                if stiffness_factor == 1.0 && payload_kg == arm.payload.mass_kg {
+                    ""
+                } else {
+                    " at an end of payload.range_kg and tolerance.stiffness_percent"
+                }
             );
             let allowed = format!(
                 "gamma {}; is each value in the unit its key names?",
@@ -344,6 +364,39 @@ impl Section<'_> {
         self.within(limits, self.need(limits.key, &limits.to_string(), written)?)
     }
 
+    fn number_or(
+        &self,
+        default: f64,
+        limits: &Limits,
+        written: &Written<Number>,
+    ) -> Result<f64, ArmFileError> {
+        match written {
+            None => Ok(default),
+            Some(number) => self.within(limits, number),
+        }
+    }
+
+    /// A name: the arm's or a region's.
+    fn name(&self, written: &Written<String>) -> Result<String, ArmFileError> {
+        let allowed = format!(
+            "a text in quotes of 1 to {} characters on one line, without control characters",
+            limits::LONGEST_NAME
+        );
+        let name = self.need("name", &allowed, written)?;
+        let text = name.get_ref().trim();
+        let fits = !text.is_empty()
+            && text.chars().count() <= limits::LONGEST_NAME
+            && !text.chars().any(char::is_control);
+        if fits {
+            Ok(text.to_owned())
+        } else {
+            let what = format!("{} is not allowed", self.full("name"));
+            Err(self
+                .page
+                .fault(name.span(), &what, &self.page.found(name.span()), &allowed))
+        }
+    }
+
     fn profile(
         &self,
         limits: &Limits,
@@ -405,6 +458,32 @@ impl Section<'_> {
                 .fault(span.clone(), what, &self.page.found(span), &allowed));
         }
         Ok(profile)
+    }
+
+    fn payload(&self, payload: &WrittenPayload) -> Result<Payload, ArmFileError> {
+        let mass_kg = self.number(&limits::MASS, &payload.mass_kg)?;
+        let Some(range) = &payload.range_kg else {
+            return Ok(Payload {
+                mass_kg,
+                range_kg: [mass_kg; 2],
+            });
+        };
+        let low = self.within(&limits::PAYLOAD_RANGE, &range.get_ref().low)?;
+        let high = self.within(&limits::PAYLOAD_RANGE, &range.get_ref().high)?;
+        if low <= mass_kg && mass_kg <= high {
+            return Ok(Payload {
+                mass_kg,
+                range_kg: [low, high],
+            });
+        }
+        let what = if low <= high {
+            "payload.range_kg does not contain the payload"
+        } else {
+            "payload.range_kg is not a range"
+        };
+        let allowed = format!("[lowest, highest] around mass_kg, {mass_kg} kg");
+        let found = self.page.found(range.span());
+        Err(self.page.fault(range.span(), what, &found, &allowed))
     }
 
     fn tendons(&self, tendons: &WrittenTendons) -> Result<Tendons, ArmFileError> {

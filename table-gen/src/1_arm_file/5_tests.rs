@@ -2,6 +2,9 @@
 
 use super::{Arm, Drive, Profile, STANDARD_GRAVITY_M_S2, limits, parse, read};
 
+#[path = "5_tests/1_safety.rs"]
+mod safety;
+
 const GOOD: &str = r#"name = "test arm"
 [spine]
 length_m = 0.5
@@ -181,6 +184,23 @@ fn readme_lists_the_ranges() {
         limits::SETPOINTS_N_M,
         limits::ANGLE,
         limits::COUPLE,
+        limits::PAYLOAD_RANGE,
+        limits::TILT_TOLERANCE,
+        limits::STIFFNESS_TOLERANCE,
+        limits::KNOCK,
+        limits::PAYLOAD_RESERVE,
+        limits::STIFFNESS_RESERVE,
+        limits::SETPOINT_RESERVE_DEG,
+        limits::SETPOINT_RESERVE_N_M,
+        limits::TENSION_FACTOR,
+        limits::CLEARANCE,
+        limits::POINT,
+        limits::NORMAL,
+        limits::CENTRE,
+        limits::RADIUS,
+        limits::TIP_TRAVEL,
+        limits::TIP_SPEED,
+        limits::SWING_COUPLE,
     ] {
         let row = readme
             .lines()

@@ -44,12 +44,16 @@ pub struct Evaluation {
 impl Evaluation {
     /// Room for `n` modes.
     pub fn new(n: usize) -> Self {
-        Self { energy: 0.0, gradient: vec![0.0; n], hessian: DMatrix::zeros(n, n) }
+        Self {
+            energy: 0.0,
+            gradient: vec![0.0; n],
+            hessian: DMatrix::zeros(n, n),
+        }
     }
 }
 
 /// Values of `P_0..=P_n` at `x` in -1..=1 by the three-term recurrence.
-pub(super) fn legendre(n: usize, x: f64) -> Vec<f64> {
+pub(crate) fn legendre(n: usize, x: f64) -> Vec<f64> {
     let mut p = vec![1.0, x];
     for i in 1..n {
         let k = i as f64;
@@ -62,7 +66,13 @@ pub(super) fn legendre(n: usize, x: f64) -> Vec<f64> {
 fn angle_modes(n: usize, s: f64) -> Vec<f64> {
     let p = legendre(n, 2.0 * s - 1.0);
     (0..n)
-        .map(|i| if i == 0 { s } else { (p[i + 1] - p[i - 1]) / (2.0 * (2 * i + 1) as f64) })
+        .map(|i| {
+            if i == 0 {
+                s
+            } else {
+                (p[i + 1] - p[i - 1]) / (2.0 * (2 * i + 1) as f64)
+            }
+        })
         .collect()
 }
 
@@ -106,7 +116,8 @@ impl ModalRod {
         }
         self.rest_energy += 0.5 * weight * gamma * kappa0 * kappa0;
         self.weight.push(weight);
-        self.gravity_weight.push(weight * rod.outboard(s, panel_end));
+        self.gravity_weight
+            .push(weight * rod.outboard(s, panel_end));
         self.phi.extend(angle_modes(self.n, s));
     }
 
@@ -175,7 +186,10 @@ impl ModalRod {
     pub fn force_bounds(&self) -> (&[f64], Vec<f64>) {
         let mut bound = vec![0.0; self.n];
         for (phi, &weight) in self.phi.chunks_exact(self.n).zip(&self.gravity_weight) {
-            bound.iter_mut().zip(phi).for_each(|(b, p)| *b += weight * p.abs());
+            bound
+                .iter_mut()
+                .zip(phi)
+                .for_each(|(b, p)| *b += weight * p.abs());
         }
         (&self.rest_load, bound)
     }
@@ -240,7 +254,11 @@ impl ModalRod {
 
     /// Orientation `alpha(s)` relative to the base tangent.
     pub fn angle(&self, c: &[f64], s: f64) -> f64 {
-        angle_modes(self.n, s).iter().zip(c).map(|(p, c)| p * c).sum()
+        angle_modes(self.n, s)
+            .iter()
+            .zip(c)
+            .map(|(p, c)| p * c)
+            .sum()
     }
 }
 
@@ -251,23 +269,26 @@ pub fn mean_angle(c: &[f64]) -> f64 {
 
 /// Curvature at the base, `alpha'(0)`: it orders the rest states of one setpoint, and no two share it.
 pub fn base_curvature(c: &[f64]) -> f64 {
-    c.iter().enumerate().map(|(i, c)| if i % 2 == 0 { *c } else { -c }).sum()
+    c.iter()
+        .enumerate()
+        .map(|(i, c)| if i % 2 == 0 { *c } else { -c })
+        .sum()
 }
 
 /// Number of negative pivots of `L D L^T` of the block of `hessian` from `first` on: by Sylvester's law of inertia the
 /// Morse index. A zero pivot counts as negative: what cannot be shown stable is not.
 pub fn morse_index(hessian: &DMatrix<f64>, first: usize) -> usize {
     let n = hessian.nrows() - first;
-    let mut a: Vec<f64> =
-        (0..n * n).map(|k| hessian[(first + k / n, first + k % n)]).collect();
+    let mut a: Vec<f64> = (0..n * n)
+        .map(|k| hessian[(first + k / n, first + k % n)])
+        .collect();
     let mut negative = 0;
     // From the last coordinate up: the stiff high modes first, so that a vanishing pivot can only come last, where it is
     // the answer and divides nothing.
     for k in (0..n).rev() {
         let pivot = a[k * n + k];
-        if !(pivot > 0.0) {
-            negative += 1;
-        }
+        let is_positive = pivot > 0.0;
+        negative += usize::from(!is_positive);
         for i in 0..k {
             let factor = a[i * n + k] / pivot;
             for j in 0..k {

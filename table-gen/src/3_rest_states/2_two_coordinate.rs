@@ -42,7 +42,12 @@ const SAME_ROOT: f64 = 1e-6;
 pub fn rest_states(modal: &ModalRod, setpoint: f64) -> Vec<TwoCoordinateState> {
     assert_eq!(modal.modes(), 2, "the proof is for two coordinates");
     let first = modal.first_free();
-    let problem = Problem { modal, setpoint, first, third: modal.third_derivative_bounds() };
+    let problem = Problem {
+        modal,
+        setpoint,
+        first,
+        third: modal.third_derivative_bounds(),
+    };
     let mut roots: Vec<TwoCoordinateState> = Vec::new();
     let mut boxes = vec![problem.outer_box()];
     let mut at = Evaluation::new(2);
@@ -56,7 +61,11 @@ pub fn rest_states(modal: &ModalRod, setpoint: f64) -> Vec<TwoCoordinateState> {
                 if roots.iter().all(distinct) {
                     modal.evaluate(&c, &mut at);
                     let index = morse_index(&at.hessian, first);
-                    roots.push(TwoCoordinateState { c, energy: at.energy, index });
+                    roots.push(TwoCoordinateState {
+                        c,
+                        energy: at.energy,
+                        index,
+                    });
                 }
             }
             Verdict::Halve => boxes.extend(cell.halves()),
@@ -102,8 +111,14 @@ impl Problem<'_> {
     /// Holds every root: bending must balance gravity, whose forces are bounded.
     fn outer_box(&self) -> Cell {
         let free = 2 - self.first;
-        let stiffness = self.modal.bending().view((self.first, self.first), (free, free)).into_owned();
-        let inverse = stiffness.try_inverse().expect("bending stiffness is positive");
+        let stiffness = self
+            .modal
+            .bending()
+            .view((self.first, self.first), (free, free))
+            .into_owned();
+        let inverse = stiffness
+            .try_inverse()
+            .expect("bending stiffness is positive");
         let (rest, bound) = self.modal.force_bounds();
         let mut force = DVector::zeros(free);
         for i in 0..free {
@@ -114,17 +129,27 @@ impl Problem<'_> {
             }
         }
         let middle_free = &inverse * force;
-        let mut cell = Cell { middle: [self.setpoint, 0.0], reach: [0.0, 0.0] };
+        let mut cell = Cell {
+            middle: [self.setpoint, 0.0],
+            reach: [0.0, 0.0],
+        };
         for i in 0..free {
             cell.middle[self.first + i] = middle_free[i];
-            cell.reach[self.first + i] =
-                1.01 * (0..free).map(|j| inverse[(i, j)].abs() * bound[self.first + j]).sum::<f64>();
+            cell.reach[self.first + i] = 1.01
+                * (0..free)
+                    .map(|j| inverse[(i, j)].abs() * bound[self.first + j])
+                    .sum::<f64>();
         }
         cell
     }
 
     fn residual(&self, at: &Evaluation, i: usize) -> f64 {
-        at.gradient[i] - if self.first == 0 && i == 0 { self.setpoint } else { 0.0 }
+        at.gradient[i]
+            - if self.first == 0 && i == 0 {
+                self.setpoint
+            } else {
+                0.0
+            }
     }
 
     fn test(&self, cell: &Cell, at: &mut Evaluation) -> Verdict {
@@ -132,9 +157,12 @@ impl Problem<'_> {
         let reach = cell.reach.map(|r| r * INFLATION);
         self.modal.evaluate(&cell.middle, at);
         // How far the Hessian can be from the middle's anywhere in the box.
-        let spread = |i: usize, j: usize| -> f64 { (0..2).map(|k| self.third[i][j][k] * reach[k]).sum() };
+        let spread =
+            |i: usize, j: usize| -> f64 { (0..2).map(|k| self.third[i][j][k] * reach[k]).sum() };
         for i in first..2 {
-            let change: f64 = (first..2).map(|j| (at.hessian[(i, j)].abs() + spread(i, j)) * reach[j]).sum();
+            let change: f64 = (first..2)
+                .map(|j| (at.hessian[(i, j)].abs() + spread(i, j)) * reach[j])
+                .sum();
             if self.residual(at, i).abs() > change {
                 return Verdict::Empty;
             }
@@ -146,10 +174,17 @@ impl Problem<'_> {
             let shift = &inverse * residual;
             let wobble = DMatrix::from_fn(free, free, |i, j| spread(first + i, first + j));
             let contraction = inverse.abs() * wobble;
-            let image: Vec<f64> =
-                (0..free).map(|i| (0..free).map(|j| contraction[(i, j)] * reach[first + j]).sum()).collect();
+            let image: Vec<f64> = (0..free)
+                .map(|i| {
+                    (0..free)
+                        .map(|j| contraction[(i, j)] * reach[first + j])
+                        .sum()
+                })
+                .collect();
             if (0..free).all(|i| shift[i].abs() + image[i] < reach[first + i]) {
-                let start = std::array::from_fn(|i| cell.middle[i] - if i < first { 0.0 } else { shift[i - first] });
+                let start = std::array::from_fn(|i| {
+                    cell.middle[i] - if i < first { 0.0 } else { shift[i - first] }
+                });
                 return Verdict::One(self.polish(start, at));
             }
             if (0..free).any(|i| shift[i].abs() - image[i] > reach[first + i]) {
@@ -169,7 +204,9 @@ impl Problem<'_> {
             self.modal.evaluate(&c, at);
             let residual = DVector::from_fn(free, |i, _| self.residual(at, first + i));
             let hessian = at.hessian.view((first, first), (free, free)).into_owned();
-            let Some(step) = hessian.lu().solve(&residual) else { break };
+            let Some(step) = hessian.lu().solve(&residual) else {
+                break;
+            };
             for i in first..2 {
                 c[i] -= step[i - first];
             }

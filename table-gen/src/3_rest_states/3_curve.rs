@@ -79,7 +79,10 @@ enum Pick<'a> {
     /// The setpoint has this value.
     Setpoint(f64),
     /// The point lies in the plane through `through` across `tangent`.
-    Across { through: &'a [f64], tangent: &'a [f64] },
+    Across {
+        through: &'a [f64],
+        tangent: &'a [f64],
+    },
 }
 
 /// Solves for rest points; owns the working space.
@@ -93,7 +96,11 @@ pub struct Solver<'a> {
 impl<'a> Solver<'a> {
     /// A solver for `modal`.
     pub fn new(modal: &'a ModalRod) -> Self {
-        Self { modal, at: Evaluation::new(modal.modes()), solved: 0 }
+        Self {
+            modal,
+            at: Evaluation::new(modal.modes()),
+            solved: 0,
+        }
     }
 
     /// Number of modes.
@@ -112,7 +119,11 @@ impl<'a> Solver<'a> {
 
     /// The point of the curve in the plane across `tangent` through `through`.
     fn across(&mut self, through: &[f64], tangent: &[f64]) -> Option<RestPoint> {
-        self.solve(through.to_vec(), Pick::Across { through, tangent }, Some(tangent))
+        self.solve(
+            through.to_vec(),
+            Pick::Across { through, tangent },
+            Some(tangent),
+        )
     }
 
     /// Newton on the rest conditions and `pick`; the tangent is oriented along `forward`, or along rising setpoint.
@@ -196,7 +207,9 @@ impl<'a> Solver<'a> {
     }
 
     fn setpoint_rate(&self, tangent: &[f64]) -> f64 {
-        (0..tangent.len()).map(|j| self.modal.setpoint_slope(&self.at, j) * tangent[j]).sum()
+        (0..tangent.len())
+            .map(|j| self.modal.setpoint_slope(&self.at, j) * tangent[j])
+            .sum()
     }
 }
 
@@ -257,7 +270,10 @@ impl Branch {
         if !self.covers(setpoint) {
             return None;
         }
-        let after = self.points.partition_point(|p| p.setpoint < setpoint).clamp(1, self.points.len() - 1);
+        let after = self
+            .points
+            .partition_point(|p| p.setpoint < setpoint)
+            .clamp(1, self.points.len() - 1);
         let (a, b) = (&self.points[after - 1], &self.points[after]);
         for end in [a, b] {
             if end.setpoint == setpoint {
@@ -274,7 +290,12 @@ impl Branch {
 
 /// Curve length between two neighbouring points, from the chord and the turn of the tangent.
 fn span(a: &RestPoint, b: &RestPoint) -> f64 {
-    let chord = a.c.iter().zip(&b.c).map(|(a, b)| (b - a).powi(2)).sum::<f64>().sqrt();
+    let chord =
+        a.c.iter()
+            .zip(&b.c)
+            .map(|(a, b)| (b - a).powi(2))
+            .sum::<f64>()
+            .sqrt();
     let cosine: f64 = a.tangent.iter().zip(&b.tangent).map(|(a, b)| a * b).sum();
     chord * (1.0 + (1.0 - cosine.abs()) / 12.0)
 }
@@ -282,7 +303,8 @@ fn span(a: &RestPoint, b: &RestPoint) -> f64 {
 /// Cubic Hermite interpolation of values `v` with slopes `d` over an interval of length `h`, at the fraction `x`.
 fn hermite(x: f64, h: f64, v: [f64; 2], d: [f64; 2]) -> f64 {
     let y = 1.0 - x;
-    y * y * ((1.0 + 2.0 * x) * v[0] + x * h * d[0]) + x * x * ((1.0 + 2.0 * y) * v[1] - y * h * d[1])
+    y * y * ((1.0 + 2.0 * x) * v[0] + x * h * d[0])
+        + x * x * ((1.0 + 2.0 * y) * v[1] - y * h * d[1])
 }
 
 /// Coefficients at `setpoint` between two points whose setpoints enclose it.
@@ -290,7 +312,12 @@ fn between(a: &RestPoint, b: &RestPoint, setpoint: f64) -> Vec<f64> {
     let h = span(a, b);
     // Tangents may point either way along the curve; here they must point from `a` to `b`.
     let forward = |p: &RestPoint| -> f64 {
-        let along: f64 = a.c.iter().zip(&b.c).zip(&p.tangent).map(|((a, b), t)| (b - a) * t).sum();
+        let along: f64 =
+            a.c.iter()
+                .zip(&b.c)
+                .zip(&p.tangent)
+                .map(|((a, b), t)| (b - a) * t)
+                .sum();
         along.signum()
     };
     let (sa, sb) = (forward(a), forward(b));
@@ -306,14 +333,25 @@ fn between(a: &RestPoint, b: &RestPoint, setpoint: f64) -> Vec<f64> {
     }
     let x = 0.5 * (low + high);
     (0..a.c.len())
-        .map(|j| hermite(x, h, [a.c[j], b.c[j]], [sa * a.tangent[j], sb * b.tangent[j]]))
+        .map(|j| {
+            hermite(
+                x,
+                h,
+                [a.c[j], b.c[j]],
+                [sa * a.tangent[j], sb * b.tangent[j]],
+            )
+        })
         .collect()
 }
 
 /// Whether `p` lies between `a` and `b` along the chord, with a little slack for its bow.
 fn is_between(a: &RestPoint, b: &RestPoint, p: &RestPoint) -> bool {
     let along = |q: &RestPoint| -> f64 {
-        a.c.iter().zip(&b.c).zip(&q.c).map(|((a, b), q)| (b - a) * (q - a)).sum()
+        a.c.iter()
+            .zip(&b.c)
+            .zip(&q.c)
+            .map(|((a, b), q)| (b - a) * (q - a))
+            .sum()
     };
     (-0.1..=1.1).contains(&(along(p) / along(b)))
 }
@@ -331,10 +369,10 @@ impl Solver<'_> {
             let direction: Vec<f64> = chord.iter().map(|d| d / length).collect();
             let middle: Vec<f64> = low.c.iter().zip(&chord).map(|(c, d)| c + 0.5 * d).collect();
             let point = self.across(&middle, &direction)?;
-            if let Some(found) = self.at_setpoint(&point.c, setpoint) {
-                if is_between(&low, &high, &found) {
-                    return Some(found);
-                }
+            if let Some(found) = self.at_setpoint(&point.c, setpoint)
+                && is_between(&low, &high, &found)
+            {
+                return Some(found);
             }
             if point.setpoint < setpoint {
                 low = point;
@@ -349,9 +387,18 @@ impl Solver<'_> {
     ///
     /// # Errors
     /// The setpoint at which the continuation could not go on.
-    pub fn follow(&mut self, start: &RestPoint, range: [f64; 2]) -> Result<(Vec<Branch>, Vec<Fold>), f64> {
+    pub fn follow(
+        &mut self,
+        start: &RestPoint,
+        range: [f64; 2],
+    ) -> Result<(Vec<Branch>, Vec<Fold>), f64> {
         let backward = self.follow_one_way(start.clone().reversed(), range)?;
-        let mut points: Vec<_> = backward.into_iter().skip(1).rev().map(RestPoint::reversed).collect();
+        let mut points: Vec<_> = backward
+            .into_iter()
+            .skip(1)
+            .rev()
+            .map(RestPoint::reversed)
+            .collect();
         points.extend(self.follow_one_way(start.clone(), range)?);
         self.split(points)
     }
@@ -370,7 +417,11 @@ impl Solver<'_> {
                 continue;
             };
             if !(range[0]..=range[1]).contains(&next.setpoint) {
-                let end = if next.setpoint > range[1] { range[1] } else { range[0] };
+                let end = if next.setpoint > range[1] {
+                    range[1]
+                } else {
+                    range[0]
+                };
                 let rising = next.setpoint_rate > 0.0;
                 // The way out must be monotone for the end to be one point of it.
                 if rising == (last.setpoint_rate > 0.0) && rising == (end == range[1]) {
@@ -400,9 +451,19 @@ impl Solver<'_> {
     /// One step of length `step`; `None` when it must be shorter: Newton lost, the curve turned too far, or the Morse index
     /// and the folds passed do not agree (two folds inside the step, or a jump to another curve).
     fn step_along(&mut self, from: &RestPoint, step: f64) -> Option<RestPoint> {
-        let predicted: Vec<f64> = from.c.iter().zip(&from.tangent).map(|(c, t)| c + step * t).collect();
+        let predicted: Vec<f64> = from
+            .c
+            .iter()
+            .zip(&from.tangent)
+            .map(|(c, t)| c + step * t)
+            .collect();
         let next = self.across(&predicted, &from.tangent)?;
-        let turn: f64 = from.tangent.iter().zip(&next.tangent).map(|(a, b)| a * b).sum();
+        let turn: f64 = from
+            .tangent
+            .iter()
+            .zip(&next.tangent)
+            .map(|(a, b)| a * b)
+            .sum();
         let passed_fold = (from.setpoint_rate > 0.0) != (next.setpoint_rate > 0.0);
         let consistent = from.index.abs_diff(next.index) == usize::from(passed_fold);
         (turn > TURN_COSINE && consistent).then_some(next)
@@ -415,17 +476,26 @@ impl Solver<'_> {
         let mut piece: Vec<RestPoint> = Vec::new();
         let mut begins_at_fold = false;
         for point in points {
-            if let Some(last) = piece.last() {
-                if (last.setpoint_rate > 0.0) != (point.setpoint_rate > 0.0) {
-                    let fold = self.locate_fold(last, &point).ok_or(last.setpoint)?;
-                    let is_highest = last.setpoint_rate > 0.0;
-                    let index = last.index;
-                    piece.push(RestPoint { index, ..fold.clone() });
-                    branches.push(oriented(piece, begins_at_fold, true));
-                    piece = vec![RestPoint { index: point.index, ..fold.clone() }];
-                    begins_at_fold = true;
-                    folds.push(Fold { point: fold, is_highest });
-                }
+            if let Some(last) = piece.last()
+                && (last.setpoint_rate > 0.0) != (point.setpoint_rate > 0.0)
+            {
+                let fold = self.locate_fold(last, &point).ok_or(last.setpoint)?;
+                let is_highest = last.setpoint_rate > 0.0;
+                let index = last.index;
+                piece.push(RestPoint {
+                    index,
+                    ..fold.clone()
+                });
+                branches.push(oriented(piece, begins_at_fold, true));
+                piece = vec![RestPoint {
+                    index: point.index,
+                    ..fold.clone()
+                }];
+                begins_at_fold = true;
+                folds.push(Fold {
+                    point: fold,
+                    is_highest,
+                });
             }
             piece.push(point);
         }
@@ -437,14 +507,23 @@ impl Solver<'_> {
     /// The fold between two neighbouring points: where the setpoint's rate along the curve vanishes (Illinois false
     /// position on the step length).
     fn locate_fold(&mut self, a: &RestPoint, b: &RestPoint) -> Option<RestPoint> {
-        let reach: f64 = b.c.iter().zip(&a.c).zip(&a.tangent).map(|((b, a), t)| (b - a) * t).sum();
+        let reach: f64 =
+            b.c.iter()
+                .zip(&a.c)
+                .zip(&a.tangent)
+                .map(|((b, a), t)| (b - a) * t)
+                .sum();
         let (mut low, mut high) = (0.0, reach);
         let (mut rate_low, mut rate_high) = (a.setpoint_rate, b.setpoint_rate);
         let mut found = None;
         let mut moved_low = None;
         for _ in 0..60 {
             let step = low - rate_low * (high - low) / (rate_high - rate_low);
-            let predicted: Vec<f64> = a.c.iter().zip(&a.tangent).map(|(c, t)| c + step * t).collect();
+            let predicted: Vec<f64> =
+                a.c.iter()
+                    .zip(&a.tangent)
+                    .map(|(c, t)| c + step * t)
+                    .collect();
             let point = self.across(&predicted, &a.tangent)?;
             let rate = point.setpoint_rate;
             found = Some(point);
@@ -452,7 +531,11 @@ impl Solver<'_> {
                 break;
             }
             let moves_low = (rate > 0.0) == (rate_low > 0.0);
-            let halve = if moved_low == Some(moves_low) { 0.5 } else { 1.0 };
+            let halve = if moved_low == Some(moves_low) {
+                0.5
+            } else {
+                1.0
+            };
             if moves_low {
                 (low, rate_low, rate_high) = (step, rate, halve * rate_high);
             } else {
@@ -466,12 +549,23 @@ impl Solver<'_> {
 
 /// A branch from points in the order they were followed, turned so that the setpoint rises.
 fn oriented(mut points: Vec<RestPoint>, begins_at_fold: bool, ends_at_fold: bool) -> Branch {
-    let end = |is_fold| if is_fold { BranchEnd::Fold } else { BranchEnd::Range };
+    let end = |is_fold| {
+        if is_fold {
+            BranchEnd::Fold
+        } else {
+            BranchEnd::Range
+        }
+    };
     let (mut from_end, mut to_end) = (end(begins_at_fold), end(ends_at_fold));
     let index = points[points.len() / 2].index;
     if points[0].setpoint > points[points.len() - 1].setpoint {
         points.reverse();
         std::mem::swap(&mut from_end, &mut to_end);
     }
-    Branch { points, from_end, to_end, index }
+    Branch {
+        points,
+        from_end,
+        to_end,
+        index,
+    }
 }

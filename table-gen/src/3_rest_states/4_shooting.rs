@@ -69,7 +69,9 @@ impl Shooting {
         };
         shooting.refine_steps(rod, bound, accuracy);
         let grid: Vec<Shot> = (0..=FIRST_GRID)
-            .map(|k| shooting.shoot(bound[0] + (bound[1] - bound[0]) * k as f64 / FIRST_GRID as f64))
+            .map(|k| {
+                shooting.shoot(bound[0] + (bound[1] - bound[0]) * k as f64 / FIRST_GRID as f64)
+            })
             .collect();
         let mut shots = vec![grid[0]];
         for pair in grid.windows(2) {
@@ -102,7 +104,11 @@ impl Shooting {
             let worst = before
                 .iter()
                 .zip(&after)
-                .map(|(a, b)| (a.tip_angle - b.tip_angle).abs().max((a.couple - b.couple).abs()))
+                .map(|(a, b)| {
+                    (a.tip_angle - b.tip_angle)
+                        .abs()
+                        .max((a.couple - b.couple).abs())
+                })
                 .fold(0.0, f64::max);
             // Fourth order: the finer shots' error is a fifteenth of the difference.
             if worst < 15.0 * accuracy {
@@ -179,10 +185,12 @@ impl Shooting {
     fn subdivide(&self, a: Shot, b: Shot, depth: usize, out: &mut Vec<Shot>) {
         let h = b.base_curvature - a.base_curvature;
         let middle = self.shoot(a.base_curvature + 0.5 * h);
-        let foretold = 0.5 * (a.setpoint + b.setpoint) + h / 8.0 * (a.setpoint_slope - b.setpoint_slope);
+        let foretold =
+            0.5 * (a.setpoint + b.setpoint) + h / 8.0 * (a.setpoint_slope - b.setpoint_slope);
         let foretold_slope =
             1.5 * (b.setpoint - a.setpoint) / h - 0.25 * (a.setpoint_slope + b.setpoint_slope);
-        let error = (foretold - middle.setpoint).abs() + 0.25 * h * (foretold_slope - middle.setpoint_slope).abs();
+        let error = (foretold - middle.setpoint).abs()
+            + 0.25 * h * (foretold_slope - middle.setpoint_slope).abs();
         let smooth = error < FORETOLD + 1e-3 * (b.setpoint - a.setpoint).abs();
         if depth == 0 || smooth {
             out.extend([middle, b]);
@@ -214,7 +222,11 @@ impl Shooting {
                 break;
             }
             let moves_low = (value > 0.0) == (f_low > 0.0);
-            let halve = if moved_low == Some(moves_low) { 0.5 } else { 1.0 };
+            let halve = if moved_low == Some(moves_low) {
+                0.5
+            } else {
+                1.0
+            };
             if moves_low {
                 (low, f_low, f_high) = (v, value, halve * f_high);
             } else {
@@ -282,16 +294,24 @@ fn base_curvature_bound(rod: &Rod, range: [f64; 2]) -> [f64; 2] {
         rest_turn += step.length * step.rest_curvature[1];
         sag += step.length * outboard * step.compliance.iter().copied().fold(0.0, f64::max);
     }
-    let least_compliance: f64 =
-        steps.iter().map(|s| s.length * s.compliance.iter().copied().fold(f64::INFINITY, f64::min)).sum();
+    let least_compliance: f64 = steps
+        .iter()
+        .map(|s| s.length * s.compliance.iter().copied().fold(f64::INFINITY, f64::min))
+        .sum();
     let tip_couple = match rod.held {
         Held::TipAngle => {
-            let turn = range.iter().map(|q0| (q0 - rest_turn).abs()).fold(0.0, f64::max);
+            let turn = range
+                .iter()
+                .map(|q0| (q0 - rest_turn).abs())
+                .fold(0.0, f64::max);
             (turn + sag) / least_compliance
         }
         Held::TipCouple => range.iter().map(|couple| couple.abs()).fold(0.0, f64::max),
     };
     // A hundredth more covers the quadrature of the bound itself.
     let reach = 1.01 * (tip_couple + outboard) / rod.stiffness(0.0);
-    [rod.rest_curvature(0.0) - reach, rod.rest_curvature(0.0) + reach]
+    [
+        rod.rest_curvature(0.0) - reach,
+        rod.rest_curvature(0.0) + reach,
+    ]
 }

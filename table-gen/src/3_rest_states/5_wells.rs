@@ -31,9 +31,18 @@ pub struct Wells {
 /// # Errors
 /// The position in `states` of a pass from which no way down to a listed well was found.
 pub fn wells(modal: &ModalRod, states: &[RestPoint]) -> Result<Wells, usize> {
-    let mut passes: Vec<usize> = (0..states.len()).filter(|&i| states[i].index == 1).collect();
-    passes.sort_by(|&a, &b| states[a].potential(modal).total_cmp(&states[b].potential(modal)));
-    let mut found = Wells { barrier: vec![None; states.len()], joins: vec![None; states.len()] };
+    let mut passes: Vec<usize> = (0..states.len())
+        .filter(|&i| states[i].index == 1)
+        .collect();
+    passes.sort_by(|&a, &b| {
+        states[a]
+            .potential(modal)
+            .total_cmp(&states[b].potential(modal))
+    });
+    let mut found = Wells {
+        barrier: vec![None; states.len()],
+        joins: vec![None; states.len()],
+    };
     let mut group: Vec<usize> = (0..states.len()).collect();
     for &pass in &passes {
         let joined = ways_down(modal, states, pass).ok_or(pass)?;
@@ -45,7 +54,8 @@ pub fn wells(modal: &ModalRod, states: &[RestPoint]) -> Result<Wells, usize> {
         // A well that is still alone leaves by this pass: every lower pass has been looked at.
         for well in joined {
             if found.barrier[well].is_none() {
-                found.barrier[well] = Some(states[pass].potential(modal) - states[well].potential(modal));
+                found.barrier[well] =
+                    Some(states[pass].potential(modal) - states[well].potential(modal));
             }
         }
         group.iter_mut().filter(|g| **g == b).for_each(|g| *g = a);
@@ -59,7 +69,12 @@ fn ways_down(modal: &ModalRod, states: &[RestPoint], pass: usize) -> Option<[usi
     let mut descent = Descent::new(modal, &states[pass]);
     modal.evaluate(&states[pass].c, &mut descent.at);
     let free = modal.modes() - first;
-    let eigen = descent.at.hessian.view((first, first), (free, free)).into_owned().symmetric_eigen();
+    let eigen = descent
+        .at
+        .hessian
+        .view((first, first), (free, free))
+        .into_owned()
+        .symmetric_eigen();
     let steepest = eigen.eigenvalues.imin();
     let direction = eigen.eigenvectors.column(steepest).into_owned();
     let well = |sign: f64| -> Option<usize> {
@@ -89,7 +104,11 @@ fn ways_down(modal: &ModalRod, states: &[RestPoint], pass: usize) -> Option<[usi
 }
 
 fn distance(a: &[f64], b: &[f64]) -> f64 {
-    a.iter().zip(b).map(|(a, b)| (a - b).powi(2)).sum::<f64>().sqrt()
+    a.iter()
+        .zip(b)
+        .map(|(a, b)| (a - b).powi(2))
+        .sum::<f64>()
+        .sqrt()
 }
 
 /// Goes downhill at a fixed setpoint; also what "the rod does from this shape" means for a two-coordinate state.
@@ -112,7 +131,11 @@ impl<'a> Descent<'a> {
             Held::TipAngle => 0.0,
             Held::TipCouple => setpoint,
         };
-        Self { modal, at: Evaluation::new(modal.modes()), couple }
+        Self {
+            modal,
+            at: Evaluation::new(modal.modes()),
+            couple,
+        }
     }
 
     fn potential(&mut self, c: &[f64]) -> f64 {
@@ -126,11 +149,19 @@ impl<'a> Descent<'a> {
     pub fn run(&mut self, mut c: Vec<f64>, longest: f64) -> Option<Vec<f64>> {
         let first = self.modal.first_free();
         let free = self.modal.modes() - first;
-        let bending = self.modal.bending().view((first, first), (free, free)).into_owned();
+        let bending = self
+            .modal
+            .bending()
+            .view((first, first), (free, free))
+            .into_owned();
         let mut potential = self.potential(&c);
         for _ in 0..STEPS {
             let gradient = DVector::from_fn(free, |i, _| self.at.gradient[first + i]);
-            let hessian = self.at.hessian.view((first, first), (free, free)).into_owned();
+            let hessian = self
+                .at
+                .hessian
+                .view((first, first), (free, free))
+                .into_owned();
             let step = downhill(&hessian, &bending, &gradient)?;
             let length = step.norm();
             if length < 1e-9 {
@@ -155,7 +186,11 @@ impl<'a> Descent<'a> {
 }
 
 /// `(H + mu K)^-1 g` with the smallest `mu` of a doubling series that makes the matrix positive definite.
-fn downhill(hessian: &DMatrix<f64>, bending: &DMatrix<f64>, gradient: &DVector<f64>) -> Option<DVector<f64>> {
+fn downhill(
+    hessian: &DMatrix<f64>,
+    bending: &DMatrix<f64>,
+    gradient: &DVector<f64>,
+) -> Option<DVector<f64>> {
     let mut mu = 0.0;
     for _ in 0..20 {
         if let Some(cholesky) = (hessian + bending * mu).cholesky() {

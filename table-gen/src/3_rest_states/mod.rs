@@ -1,12 +1,19 @@
 //! Every rest state of an arm over its setpoint range, followed in curvature modes and certified by shooting.
 //!
 //! Read in this order: [`modes`] the discretised rod, [`two_coordinate`] the roots it starts from, [`curve`] continuation
-//! through folds, [`shooting`] the independent audit, [`wells`] barriers.
+//! through folds, [`shooting`] the independent audit, [`wells`] barriers, [`confirm`] what of the two-coordinate model is true,
+//! [`profile`] the energy as a picture, [`listing`] one setpoint in SI.
 
+#[path = "6_confirm.rs"]
+pub mod confirm;
 #[path = "3_curve.rs"]
 pub mod curve;
+#[path = "8_listing.rs"]
+pub mod listing;
 #[path = "1_modes.rs"]
 pub mod modes;
+#[path = "7_profile.rs"]
+pub mod profile;
 #[path = "4_shooting.rs"]
 pub mod shooting;
 #[path = "2_two_coordinate.rs"]
@@ -113,7 +120,11 @@ impl fmt::Display for RestStatesError {
                 "too soft to tabulate: gamma = B/(m g L^2) = {gamma:.5}; {MOST_MODES} curvature modes do not reach the accuracy \
                  asked. Stiffen the spine, lighten the arm, narrow the setpoint range or ask for less accuracy"
             ),
-            Self::AuditFailed { setpoint, listed, shot } => write!(
+            Self::AuditFailed {
+                setpoint,
+                listed,
+                shot,
+            } => write!(
                 f,
                 "audit failed at setpoint {setpoint:.6} (rad or N m): {listed} rest states listed, shooting from the base finds \
                  {shot}"
@@ -123,7 +134,10 @@ impl fmt::Display for RestStatesError {
                 "rest states incomplete at setpoint {setpoint:.6} (rad or N m): the sum of (-1)^index is {sum}, must be 1"
             ),
             Self::CurveLost { setpoint } => {
-                write!(f, "a curve of rest states could not be followed past setpoint {setpoint:.6} (rad or N m)")
+                write!(
+                    f,
+                    "a curve of rest states could not be followed past setpoint {setpoint:.6} (rad or N m)"
+                )
             }
             Self::PassWithoutWells { setpoint } => write!(
                 f,
@@ -149,14 +163,26 @@ impl RestStates {
             angle_rad: 0.25 * accuracy.angle_rad,
             couple: 0.25 * accuracy.couple_fraction,
         };
-        let shooting = Shooting::scan(rod, outer, 0.05 * allowed.angle_rad.min(allowed.couple).min(1e-5));
+        let shooting = Shooting::scan(
+            rod,
+            outer,
+            0.05 * allowed.angle_rad.min(allowed.couple).min(1e-5),
+        );
         let starts = two_coordinate_starts(rod);
-        let exact: Vec<(f64, Vec<Shot>)> =
-            spread(rod.setpoints, AUDIT_SETPOINTS).map(|x| (x, shooting.rest_states(x))).collect();
+        let exact: Vec<(f64, Vec<Shot>)> = spread(rod.setpoints, AUDIT_SETPOINTS)
+            .map(|x| (x, shooting.rest_states(x)))
+            .collect();
         let mut solved = 0;
         for n in FEWEST_MODES..=MOST_MODES {
             let modal = ModalRod::new(rod, n);
-            let mut search = Search { rod, shooting: &shooting, solver: Solver::new(&modal), outer, branches: vec![], folds: vec![] };
+            let mut search = Search {
+                rod,
+                shooting: &shooting,
+                solver: Solver::new(&modal),
+                outer,
+                branches: vec![],
+                folds: vec![],
+            };
             let distance = search.list_and_compare(&starts, &exact);
             solved += search.solver.solved;
             let Ok(distance) = distance else { continue };
@@ -165,12 +191,28 @@ impl RestStates {
             }
             let audited = search.certify()?;
             solved += search.solver.solved;
-            let Search { mut branches, mut folds, .. } = search;
+            let Search {
+                mut branches,
+                mut folds,
+                ..
+            } = search;
             branches.retain(|b| b.to() > lo && b.from() < hi);
             folds.retain(|f| (lo..=hi).contains(&f.point.setpoint));
-            branches.sort_by(|a, b| a.middle_base_curvature().total_cmp(&b.middle_base_curvature()));
+            branches.sort_by(|a, b| {
+                a.middle_base_curvature()
+                    .total_cmp(&b.middle_base_curvature())
+            });
             folds.sort_by(|a, b| a.point.setpoint.total_cmp(&b.point.setpoint));
-            return Ok(Self { rod: rod.clone(), modal, branches, folds, distance, audited, solved, shooting });
+            return Ok(Self {
+                rod: rod.clone(),
+                modal,
+                branches,
+                folds,
+                distance,
+                audited,
+                solved,
+                shooting,
+            });
         }
         Err(RestStatesError::TooSoft { gamma })
     }
@@ -179,7 +221,11 @@ impl RestStates {
     ///
     /// # Errors
     /// [`RestStatesError::DegreeSum`] when their indices do not sum to one.
-    pub fn at(&self, solver: &mut Solver, setpoint: f64) -> Result<Vec<(usize, RestPoint)>, RestStatesError> {
+    pub fn at(
+        &self,
+        solver: &mut Solver,
+        setpoint: f64,
+    ) -> Result<Vec<(usize, RestPoint)>, RestStatesError> {
         states_at(&self.rod, &self.branches, solver, setpoint)
     }
 }
@@ -191,7 +237,9 @@ fn states_at(
     solver: &mut Solver,
     setpoint: f64,
 ) -> Result<Vec<(usize, RestPoint)>, RestStatesError> {
-    let lost = || RestStatesError::CurveLost { setpoint: rod.setpoint_si(setpoint) };
+    let lost = || RestStatesError::CurveLost {
+        setpoint: rod.setpoint_si(setpoint),
+    };
     let mut states = Vec::new();
     for (number, branch) in branches.iter().enumerate() {
         if branch.covers(setpoint) {
@@ -203,13 +251,18 @@ fn states_at(
     if sum == 1 {
         Ok(states)
     } else {
-        Err(RestStatesError::DegreeSum { setpoint: rod.setpoint_si(setpoint), sum })
+        Err(RestStatesError::DegreeSum {
+            setpoint: rod.setpoint_si(setpoint),
+            sum,
+        })
     }
 }
 
 /// `sum (-1)^index`, which is 1 over all rest states of one setpoint (Poincare-Hopf; the energy grows at infinity).
 pub fn degree_sum(indices: impl Iterator<Item = usize>) -> i32 {
-    indices.map(|index| if index % 2 == 0 { 1 } else { -1 }).sum()
+    indices
+        .map(|index| if index % 2 == 0 { 1 } else { -1 })
+        .sum()
 }
 
 /// Rest states of the two-coordinate arm at the range's ends and between: where curves are first looked for.
@@ -217,7 +270,9 @@ fn two_coordinate_starts(rod: &Rod) -> Vec<(f64, [f64; 2])> {
     let modal = ModalRod::new(rod, 2);
     spread(rod.setpoints, 9)
         .flat_map(|setpoint| {
-            two_coordinate::rest_states(&modal, setpoint).into_iter().map(move |root| (setpoint, root.c))
+            two_coordinate::rest_states(&modal, setpoint)
+                .into_iter()
+                .map(move |root| (setpoint, root.c))
         })
         .collect()
 }
@@ -259,7 +314,10 @@ impl Search<'_> {
         for &(setpoint, ref shots) in exact {
             if self.listed_at(setpoint) != shots.len() {
                 for shot in shots {
-                    let guess = project(&self.shooting.curvatures(shot.base_curvature), self.solver.modes());
+                    let guess = project(
+                        &self.shooting.curvatures(shot.base_curvature),
+                        self.solver.modes(),
+                    );
                     if let Some(point) = self.solver.at_setpoint(&guess, setpoint) {
                         self.add_curve(&point)?;
                     }
@@ -277,7 +335,10 @@ impl Search<'_> {
             let setpoint_off = fold.setpoint - exact.setpoint;
             let angle = fold.mean_angle() - exact.mean_angle;
             match self.rod.held {
-                Held::TipAngle => distance.widen(angle.abs().max(setpoint_off.abs()), fold.couple - exact.couple),
+                Held::TipAngle => distance.widen(
+                    angle.abs().max(setpoint_off.abs()),
+                    fold.couple - exact.couple,
+                ),
                 Held::TipCouple => distance.widen(angle, setpoint_off),
             }
         }
@@ -290,7 +351,8 @@ impl Search<'_> {
     fn certify(&mut self) -> Result<usize, RestStatesError> {
         let [lo, hi] = self.rod.setpoints;
         let between = 0.5 * (hi - lo) / (AUDIT_SETPOINTS - 1) as f64;
-        let mut setpoints: Vec<f64> = spread([lo + between, hi - between], AUDIT_SETPOINTS - 1).collect();
+        let mut setpoints: Vec<f64> =
+            spread([lo + between, hi - between], AUDIT_SETPOINTS - 1).collect();
         let beside = BESIDE_FOLD * (hi - lo);
         for fold in &self.folds {
             setpoints.extend([fold.point.setpoint - beside, fold.point.setpoint + beside]);
@@ -303,10 +365,18 @@ impl Search<'_> {
     }
 
     /// The listed rest states at `setpoint`, when number and indices agree with the shooting's.
-    fn compare(&mut self, setpoint: f64, shots: &[Shot]) -> Result<Vec<RestPoint>, RestStatesError> {
+    fn compare(
+        &mut self,
+        setpoint: f64,
+        shots: &[Shot],
+    ) -> Result<Vec<RestPoint>, RestStatesError> {
         let states: Vec<RestPoint> =
-            states_at(self.rod, &self.branches, &mut self.solver, setpoint)?.into_iter().map(|s| s.1).collect();
-        let agree = states.len() == shots.len() && states.iter().zip(shots).all(|(a, b)| a.index == b.index);
+            states_at(self.rod, &self.branches, &mut self.solver, setpoint)?
+                .into_iter()
+                .map(|s| s.1)
+                .collect();
+        let agree = states.len() == shots.len()
+            && states.iter().zip(shots).all(|(a, b)| a.index == b.index);
         if agree {
             Ok(states)
         } else {
@@ -324,18 +394,28 @@ impl Search<'_> {
 
     /// Follows the curve through `point` unless it is already listed.
     fn add_curve(&mut self, point: &RestPoint) -> Result<(), RestStatesError> {
-        for branch in self.branches.iter().filter(|b| b.index == point.index && b.covers(point.setpoint)) {
+        for branch in self
+            .branches
+            .iter()
+            .filter(|b| b.index == point.index && b.covers(point.setpoint))
+        {
             if let Some(known) = branch.state_at(&mut self.solver, point.setpoint) {
-                let apart = known.c.iter().zip(&point.c).map(|(a, b)| (a - b).abs()).fold(0.0, f64::max);
+                let apart = known
+                    .c
+                    .iter()
+                    .zip(&point.c)
+                    .map(|(a, b)| (a - b).abs())
+                    .fold(0.0, f64::max);
                 if apart < 1e-6 {
                     return Ok(());
                 }
             }
         }
-        let (branches, folds) = self
-            .solver
-            .follow(point, self.outer)
-            .map_err(|setpoint| RestStatesError::CurveLost { setpoint: self.rod.setpoint_si(setpoint) })?;
+        let (branches, folds) = self.solver.follow(point, self.outer).map_err(|setpoint| {
+            RestStatesError::CurveLost {
+                setpoint: self.rod.setpoint_si(setpoint),
+            }
+        })?;
         self.branches.extend(branches);
         self.folds.extend(folds);
         Ok(())
@@ -344,11 +424,22 @@ impl Search<'_> {
     /// Folds within the setpoint range beside their exact counterparts.
     fn matched_folds(&self) -> Result<Vec<(RestPoint, Shot)>, RestStatesError> {
         let [lo, hi] = self.rod.setpoints;
-        let mut listed: Vec<&Fold> =
-            self.folds.iter().filter(|f| (lo..=hi).contains(&f.point.setpoint)).collect();
-        listed.sort_by(|a, b| a.point.base_curvature().total_cmp(&b.point.base_curvature()));
-        let exact: Vec<&Shot> =
-            self.shooting.folds().iter().filter(|f| (lo..=hi).contains(&f.setpoint)).collect();
+        let mut listed: Vec<&Fold> = self
+            .folds
+            .iter()
+            .filter(|f| (lo..=hi).contains(&f.point.setpoint))
+            .collect();
+        listed.sort_by(|a, b| {
+            a.point
+                .base_curvature()
+                .total_cmp(&b.point.base_curvature())
+        });
+        let exact: Vec<&Shot> = self
+            .shooting
+            .folds()
+            .iter()
+            .filter(|f| (lo..=hi).contains(&f.setpoint))
+            .collect();
         if listed.len() != exact.len() {
             let setpoint = listed.first().map_or(lo, |f| f.point.setpoint);
             return Err(RestStatesError::AuditFailed {
@@ -357,7 +448,11 @@ impl Search<'_> {
                 shot: exact.len(),
             });
         }
-        Ok(listed.iter().zip(exact).map(|(fold, shot)| (fold.point.clone(), *shot)).collect())
+        Ok(listed
+            .iter()
+            .zip(exact)
+            .map(|(fold, shot)| (fold.point.clone(), *shot))
+            .collect())
     }
 }
 

@@ -16,7 +16,10 @@ pub(super) struct ExactMap {
 impl ExactMap {
     /// Folds are anchors wherever the curve was followed to them, inside the setpoint range or beyond.
     pub(super) fn new(rod: &Rod, branch: &Branch) -> Self {
-        let (fold_from, fold_to) = (branch.from_end == BranchEnd::Fold, branch.to_end == BranchEnd::Fold);
+        let (fold_from, fold_to) = (
+            branch.from_end == BranchEnd::Fold,
+            branch.to_end == BranchEnd::Fold,
+        );
         let [lo, hi] = rod.setpoints;
         Self {
             anchor_from: rod.setpoint_si(if fold_from { branch.from() } else { lo }),
@@ -49,7 +52,10 @@ impl ExactMap {
     /// The parameter of a setpoint.
     pub(super) fn t(&self, setpoint: f64) -> f64 {
         let span = self.anchor_to - self.anchor_from;
-        let (u, v) = ((setpoint - self.anchor_from) / span, (self.anchor_to - setpoint) / span);
+        let (u, v) = (
+            (setpoint - self.anchor_from) / span,
+            (self.anchor_to - setpoint) / span,
+        );
         let root = |x: f64| x.max(0.0).sqrt();
         match (self.fold_from, self.fold_to) {
             (false, false) => u,

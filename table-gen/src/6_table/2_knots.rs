@@ -42,7 +42,12 @@ pub(super) struct Sampler<'a> {
 impl<'a> Sampler<'a> {
     pub(super) fn new(rest: &'a RestStates, branch: &'a Branch) -> Self {
         let map = ExactMap::new(&rest.rod, branch);
-        Self { rest, branch, map, solver: Solver::new(&rest.modal) }
+        Self {
+            rest,
+            branch,
+            map,
+            solver: Solver::new(&rest.modal),
+        }
     }
 
     pub(super) fn map(&self) -> &ExactMap {
@@ -68,7 +73,11 @@ impl<'a> Sampler<'a> {
 
     /// The rest state at `setpoint` (SI), which is taken as the branch's end when rounding puts it beyond.
     pub(super) fn state(&mut self, setpoint: f64) -> Option<RestPoint> {
-        let at = self.rest.rod.setpoint_from_si(setpoint).clamp(self.branch.from(), self.branch.to());
+        let at = self
+            .rest
+            .rod
+            .setpoint_from_si(setpoint)
+            .clamp(self.branch.from(), self.branch.to());
         self.branch.state_at(&mut self.solver, at)
     }
 
@@ -87,7 +96,8 @@ impl<'a> Sampler<'a> {
     fn knot(&mut self, t: f64) -> Option<Knot> {
         let value = self.at(t)?;
         let [low, high] = self.cover().map(|setpoint| self.map.t(setpoint));
-        let beside = |is_fold: bool, end: f64| is_fold && (t - end).abs() < 2.0 * ONE_SIDED_DIFFERENCE;
+        let beside =
+            |is_fold: bool, end: f64| is_fold && (t - end).abs() < 2.0 * ONE_SIDED_DIFFERENCE;
         let inward = if beside(self.map.fold_from(), low) {
             1.0
         } else if beside(self.map.fold_to(), high) {
@@ -113,14 +123,21 @@ impl<'a> Sampler<'a> {
     }
 
     /// Appends knots up to `to`, halving the interval from the last one until it is followed well enough.
-    fn refine(&mut self, to: Knot, allowed: &Quantities, depth: usize, knots: &mut Vec<Knot>) -> Option<()> {
+    fn refine(
+        &mut self,
+        to: Knot,
+        allowed: &Quantities,
+        depth: usize,
+        knots: &mut Vec<Knot>,
+    ) -> Option<()> {
         let from = knots[knots.len() - 1];
         let kept = self.kept();
         let mut follows = true;
         for x in [0.15, 0.3, 0.5, 0.7, 0.85] {
             let truth = self.at(from.t + x * (to.t - from.t))?;
             let foretold = hermite(&from, &to, x);
-            follows &= (0..kept).all(|q| (foretold[q] - truth[q]).abs() <= INTERPOLATION_SHARE * allowed[q]);
+            follows &= (0..kept)
+                .all(|q| (foretold[q] - truth[q]).abs() <= INTERPOLATION_SHARE * allowed[q]);
         }
         if follows || depth == 0 {
             knots.push(to);
@@ -133,7 +150,11 @@ impl<'a> Sampler<'a> {
 
     /// How many quantities the table keeps for this branch.
     fn kept(&self) -> usize {
-        if self.branch.index == 0 { QUANTITIES } else { UNSTABLE_QUANTITIES }
+        if self.branch.index == 0 {
+            QUANTITIES
+        } else {
+            UNSTABLE_QUANTITIES
+        }
     }
 
     /// The branch's directory entry and the values of its knots, as stored.
@@ -173,7 +194,9 @@ impl Knot {
 fn hermite(a: &Knot, b: &Knot, x: f64) -> Quantities {
     let (h, y) = (b.t - a.t, 1.0 - x);
     std::array::from_fn(|q| {
-        a.value[q] + x * x * (3.0 - 2.0 * x) * (b.value[q] - a.value[q]) + h * x * y * (y * a.slope[q] - x * b.slope[q])
+        a.value[q]
+            + x * x * (3.0 - 2.0 * x) * (b.value[q] - a.value[q])
+            + h * x * y * (y * a.slope[q] - x * b.slope[q])
     })
 }
 

@@ -43,7 +43,11 @@ impl Search<'_, '_> {
                 }
                 (Some((start, limit)), false) => {
                     let at = self.crossing(last, here)?;
-                    stretches.extend(stretch(branch, (start, limit), (at, self.tension_limit(at)?)));
+                    stretches.extend(stretch(
+                        branch,
+                        (start, limit),
+                        (at, self.tension_limit(at)?),
+                    ));
                     open = None;
                 }
                 _ => {}
@@ -59,10 +63,18 @@ impl Search<'_, '_> {
     /// The limit at an end that no tension sets: the fold, less what was deducted, or the end of the table.
     fn end_limit(&self, end: usize, setpoint: f64) -> Limit {
         if self.sampler.ends_in_fold()[end] {
-            Limit { requirement: Requirement::FoldDistance, value: self.deducted.setpoint, limit: self.deducted.setpoint }
+            Limit {
+                requirement: Requirement::FoldDistance,
+                value: self.deducted.setpoint,
+                limit: self.deducted.setpoint,
+            }
         } else {
             let range_end = setpoint as f32;
-            Limit { requirement: Requirement::TableRange, value: range_end, limit: range_end }
+            Limit {
+                requirement: Requirement::TableRange,
+                value: range_end,
+                limit: range_end,
+            }
         }
     }
 
@@ -76,7 +88,11 @@ impl Search<'_, '_> {
 
     fn pulling_tension_n(&mut self, setpoint: f64) -> Option<f64> {
         let couple_n_m = self.sampler.state(setpoint)?.couple * self.energy_scale_j;
-        Some(self.tendons.pretension_n + couple_n_m.abs() / self.tendons.offset_m + f64::from(self.deducted.tension_n))
+        Some(
+            self.tendons.pretension_n
+                + couple_n_m.abs() / self.tendons.offset_m
+                + f64::from(self.deducted.tension_n),
+        )
     }
 
     fn holds(&mut self, setpoint: f64) -> Option<bool> {
@@ -98,12 +114,25 @@ impl Search<'_, '_> {
 }
 
 /// A stretch inside its ends after rounding to f32; `None` when nothing is left.
-fn stretch(branch: u8, (from, from_limit): (f64, Limit), (to, to_limit): (f64, Limit)) -> Option<Stretch> {
+fn stretch(
+    branch: u8,
+    (from, from_limit): (f64, Limit),
+    (to, to_limit): (f64, Limit),
+) -> Option<Stretch> {
     let inward = |value: f64, rounded: f32, up: bool| match up {
         true if f64::from(rounded) < value => rounded.next_up(),
         false if f64::from(rounded) > value => rounded.next_down(),
         _ => rounded,
     };
-    let (from, to) = (inward(from, from as f32, true), inward(to, to as f32, false));
-    (from < to).then_some(Stretch { branch, from, to, from_limit, to_limit })
+    let (from, to) = (
+        inward(from, from as f32, true),
+        inward(to, to as f32, false),
+    );
+    (from < to).then_some(Stretch {
+        branch,
+        from,
+        to,
+        from_limit,
+        to_limit,
+    })
 }

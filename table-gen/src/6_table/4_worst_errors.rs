@@ -13,8 +13,14 @@ const PLACES: usize = 16;
 /// Of these, every so many-th also compares the barrier.
 const BARRIER_EVERY: usize = 4;
 /// Names of the quantities, in the order of the table.
-const NAMES: [&str; QUANTITIES] =
-    ["mean angle (rad)", "couple or tip angle (N m or rad)", "energy (J)", "tip x (m)", "tip y (m)", "restoring stiffness (N m/rad)"];
+const NAMES: [&str; QUANTITIES] = [
+    "mean angle (rad)",
+    "couple or tip angle (N m or rad)",
+    "energy (J)",
+    "tip x (m)",
+    "tip y (m)",
+    "restoring stiffness (N m/rad)",
+];
 
 /// The worst of all comparisons.
 #[derive(Clone, Copy, Debug)]
@@ -32,8 +38,13 @@ impl Measured {
         let barrier = ("barrier (J)", self.barrier_j, 2.0 * allowed[2]);
         let each = (0..QUANTITIES).map(|q| (NAMES[q], self.by_quantity[q], allowed[q]));
         for (quantity, found, allowed) in each.chain([barrier]) {
-            if !(found <= allowed) {
-                return Err(TabulationError::NotAccurate { quantity, found, allowed });
+            let is_within = found <= allowed;
+            if !is_within {
+                return Err(TabulationError::NotAccurate {
+                    quantity,
+                    found,
+                    allowed,
+                });
             }
         }
         Ok(())
@@ -57,9 +68,14 @@ pub(super) fn measure(
         for pair in knots.windows(2) {
             for place in 0..PLACES {
                 let x = (place as f64 + 0.5) / PLACES as f64;
-                let setpoint = sampler.map().setpoint(pair[0].t() + x * (pair[1].t() - pair[0].t())) as f32;
+                let setpoint = sampler
+                    .map()
+                    .setpoint(pair[0].t() + x * (pair[1].t() - pair[0].t()))
+                    as f32;
                 let setpoint = setpoint.clamp(from, to);
-                let lost = RestStatesError::CurveLost { setpoint: f64::from(setpoint) };
+                let lost = RestStatesError::CurveLost {
+                    setpoint: f64::from(setpoint),
+                };
                 let answer = slice.at(number as u8, setpoint).map_err(|_| lost)?;
                 let truth = sampler.quantities(f64::from(setpoint)).ok_or(lost)?;
                 for (worst, error) in by_quantity.iter_mut().zip(errors(&slice, &answer, &truth)) {
@@ -72,7 +88,8 @@ pub(super) fn measure(
             }
         }
     }
-    let [mean_angle, conjugate, energy, tip_x, tip_y, restoring] = by_quantity.map(|error| (error as f32).next_up());
+    let [mean_angle, conjugate, energy, tip_x, tip_y, restoring] =
+        by_quantity.map(|error| (error as f32).next_up());
     let (tip_angle_rad, couple_n_m) = match rest.rod.held {
         Held::TipAngle => (0.0, conjugate),
         Held::TipCouple => (conjugate, 0.0),
@@ -85,7 +102,12 @@ pub(super) fn measure(
         tip_m: tip_x.max(tip_y),
         restoring_n_m_per_rad: restoring,
     };
-    Ok(Measured { worst, barrier_j, compared, by_quantity })
+    Ok(Measured {
+        worst,
+        barrier_j,
+        compared,
+        by_quantity,
+    })
 }
 
 /// Differences in the order of the table's quantities; zero for those that an unstable branch does not keep.
@@ -95,22 +117,29 @@ fn errors(slice: &Slice, answer: &RestState, truth: &Quantities) -> Quantities {
         Drive::AppliedCouple => answer.tip_angle_rad,
     };
     let mut found = *truth;
-    found[..UNSTABLE_QUANTITIES].copy_from_slice(&[answer.mean_angle_rad, conjugate, answer.energy_j].map(f64::from));
+    found[..UNSTABLE_QUANTITIES]
+        .copy_from_slice(&[answer.mean_angle_rad, conjugate, answer.energy_j].map(f64::from));
     if let Some(well) = answer.well {
-        found[UNSTABLE_QUANTITIES..]
-            .copy_from_slice(&[well.tip_x_m, well.tip_y_m, well.restoring_n_m_per_rad].map(f64::from));
+        found[UNSTABLE_QUANTITIES..].copy_from_slice(
+            &[well.tip_x_m, well.tip_y_m, well.restoring_n_m_per_rad].map(f64::from),
+        );
     }
     std::array::from_fn(|q| (found[q] - truth[q]).abs())
 }
 
 /// Difference of the barrier from the one by going downhill from every pass afresh. Where the firmware knows of a pass and
 /// the fresh solve of none, or the reverse, the whole barrier counts.
-fn barrier_error(rest: &RestStates, answer: &RestState, setpoint: f32) -> Result<f64, RestStatesError> {
+fn barrier_error(
+    rest: &RestStates,
+    answer: &RestState,
+    setpoint: f32,
+) -> Result<f64, RestStatesError> {
     let setpoint = f64::from(setpoint);
     let mut solver = Solver::new(&rest.modal);
     let states = rest.at(&mut solver, rest.rod.setpoint_from_si(setpoint))?;
     let (numbers, points): (Vec<usize>, Vec<_>) = states.into_iter().unzip();
-    let wells = wells(&rest.modal, &points).map_err(|_| RestStatesError::PassWithoutWells { setpoint })?;
+    let wells =
+        wells(&rest.modal, &points).map_err(|_| RestStatesError::PassWithoutWells { setpoint })?;
     let truth = numbers
         .iter()
         .position(|&number| number == usize::from(answer.branch))

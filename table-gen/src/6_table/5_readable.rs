@@ -80,12 +80,15 @@ impl<'a> Readable<'a> {
                         }
                     })
                     .collect(),
-                stretches: slice.branches().flat_map(|branch| slice.stretches(branch.number)).collect(),
+                stretches: slice
+                    .branches()
+                    .flat_map(|branch| slice.stretches(branch.number))
+                    .collect(),
             })
             .collect();
         Ok(Self {
             format_version: firmware_core::format::VERSION,
-            bytes: table.len(),
+            bytes: table.byte_len(),
             header: table.header()?,
             slices,
         })

@@ -16,8 +16,12 @@ use crate::rest_states::curve::Solver;
 use crate::rest_states::wells::wells;
 use crate::rest_states::{RestStates, RestStatesError};
 use crate::rod::{Held, Rod};
-use firmware_core::format::write::{BranchContents, Contents, SliceContents, WriteError, buffer_len, write};
-use firmware_core::{BranchEntry, Deducted, Drive, Header, Stretch, Table, TableError, Units, WorstError};
+use firmware_core::format::write::{
+    BranchContents, Contents, SliceContents, WriteError, buffer_len, write,
+};
+use firmware_core::{
+    BranchEntry, Deducted, Drive, Header, Stretch, Table, TableError, Units, WorstError,
+};
 use knots::{Quantities, Sampler};
 use std::fmt;
 
@@ -73,9 +77,16 @@ impl fmt::Display for TabulationError {
         match self {
             Self::RestStates(error) => error.fmt(f),
             Self::TooManyBranches { found } => {
-                write!(f, "{found} branches of rest states; a table holds {MOST_BRANCHES}. Narrow the setpoint range")
+                write!(
+                    f,
+                    "{found} branches of rest states; a table holds {MOST_BRANCHES}. Narrow the setpoint range"
+                )
             }
-            Self::NotAccurate { quantity, found, allowed } => write!(
+            Self::NotAccurate {
+                quantity,
+                found,
+                allowed,
+            } => write!(
                 f,
                 "the table would be off by {found:.3e} in {quantity}, {allowed:.3e} is allowed. Ask for less accuracy: the table \
                  stores single-precision numbers"
@@ -104,13 +115,21 @@ pub fn tabulate(arm: &Arm, progress: &mut dyn FnMut(f64)) -> Result<Tabulation, 
     let rest = RestStates::find(&rod, &arm.accuracy, arm.gamma())?;
     progress(0.3);
     if rest.branches.len() > MOST_BRANCHES {
-        return Err(TabulationError::TooManyBranches { found: rest.branches.len() });
+        return Err(TabulationError::TooManyBranches {
+            found: rest.branches.len(),
+        });
     }
-    let mut samplers: Vec<Sampler> = rest.branches.iter().map(|branch| Sampler::new(&rest, branch)).collect();
+    let mut samplers: Vec<Sampler> = rest
+        .branches
+        .iter()
+        .map(|branch| Sampler::new(&rest, branch))
+        .collect();
     let allowed = allowed_errors(arm, &rod);
     let mut knots = Vec::new();
     for sampler in &mut samplers {
-        let lost = RestStatesError::CurveLost { setpoint: sampler.cover()[0] };
+        let lost = RestStatesError::CurveLost {
+            setpoint: sampler.cover()[0],
+        };
         knots.push(sampler.knots(&allowed).ok_or(lost)?);
         progress(0.3 + 0.2 * knots.len() as f64 / rest.branches.len() as f64);
     }
@@ -129,9 +148,18 @@ pub fn tabulate(arm: &Arm, progress: &mut dyn FnMut(f64)) -> Result<Tabulation, 
         .collect();
 
     // First without stretches, to measure the errors that shorten them.
-    let draft = assemble(arm, &rest, &branches, &[], WorstError::default(), Deducted::default())?;
+    let draft = assemble(
+        arm,
+        &rest,
+        &branches,
+        &[],
+        WorstError::default(),
+        Deducted::default(),
+    )?;
     let table = Table::new(&draft).map_err(TabulationError::Refused)?;
-    let measured = worst_errors::measure(&table, &rest, &mut samplers, &knots, &mut |done| progress(0.6 + 0.3 * done))?;
+    let measured = worst_errors::measure(&table, &rest, &mut samplers, &knots, &mut |done| {
+        progress(0.6 + 0.3 * done)
+    })?;
     measured.within(&allowed)?;
     let deducted = Deducted {
         setpoint: fold_uncertainty(&rest) as f32,
@@ -140,9 +168,15 @@ pub fn tabulate(arm: &Arm, progress: &mut dyn FnMut(f64)) -> Result<Tabulation, 
     let mut stretches = Vec::new();
     for (number, sampler) in samplers.iter_mut().enumerate() {
         if rest.branches[number].index == 0 {
-            let lost = RestStatesError::CurveLost { setpoint: sampler.cover()[0] };
-            let mut search =
-                stretches::Search { sampler, tendons: &arm.tendons, energy_scale_j: rod.energy_scale_j, deducted };
+            let lost = RestStatesError::CurveLost {
+                setpoint: sampler.cover()[0],
+            };
+            let mut search = stretches::Search {
+                sampler,
+                tendons: &arm.tendons,
+                energy_scale_j: rod.energy_scale_j,
+                deducted,
+            };
             stretches.extend(search.run(number as u8).ok_or(lost)?);
         }
     }
@@ -169,12 +203,24 @@ fn allowed_errors(arm: &Arm, rod: &Rod) -> Quantities {
         Held::TipAngle => couple,
         Held::TipCouple => angle,
     };
-    [angle, conjugate, couple, angle * rod.length_m, angle * rod.length_m, couple]
+    [
+        angle,
+        conjugate,
+        couple,
+        angle * rod.length_m,
+        angle * rod.length_m,
+        couple,
+    ]
 }
 
 /// How far a stored fold may be from the exact one, in units of the setpoint: the modes' part and f32 rounding.
 fn fold_uncertainty(rest: &RestStates) -> f64 {
-    let largest = rest.rod.setpoints.iter().map(|s| rest.rod.setpoint_si(*s).abs()).fold(0.0, f64::max);
+    let largest = rest
+        .rod
+        .setpoints
+        .iter()
+        .map(|s| rest.rod.setpoint_si(*s).abs())
+        .fold(0.0, f64::max);
     let modes = match rest.rod.held {
         Held::TipAngle => rest.distance.angle_rad,
         Held::TipCouple => rest.distance.couple * rest.rod.energy_scale_j,
@@ -190,12 +236,17 @@ fn exits(rest: &RestStates, setpoints: &[f64]) -> Result<Vec<u32>, RestStatesErr
     for &setpoint in setpoints {
         let at = rest.rod.setpoint_from_si(setpoint);
         // At a fold itself two states are one, and there is no telling pass from well.
-        if rest.folds.iter().any(|fold| (fold.point.setpoint - at).abs() < 1e-9) {
+        if rest
+            .folds
+            .iter()
+            .any(|fold| (fold.point.setpoint - at).abs() < 1e-9)
+        {
             continue;
         }
         let states = rest.at(&mut solver, at)?;
         let (numbers, points): (Vec<usize>, Vec<_>) = states.into_iter().unzip();
-        let wells = wells(&rest.modal, &points).map_err(|_| RestStatesError::PassWithoutWells { setpoint })?;
+        let wells = wells(&rest.modal, &points)
+            .map_err(|_| RestStatesError::PassWithoutWells { setpoint })?;
         for (pass, joined) in wells.joins.iter().enumerate() {
             if let Some([a, b]) = joined.filter(|[a, b]| a != b) {
                 exits[numbers[a]] |= 1 << numbers[pass];
@@ -240,10 +291,22 @@ fn assemble(
         worst_error,
         deducted,
     };
-    let branches: Vec<BranchContents> =
-        branches.iter().map(|(entry, knots)| BranchContents { entry: *entry, knots }).collect();
-    let slice = SliceContents { payload_kg: arm.payload.mass_kg as f32, branches: &branches, stretches };
-    let contents = Contents { header, slices: &[slice] };
+    let branches: Vec<BranchContents> = branches
+        .iter()
+        .map(|(entry, knots)| BranchContents {
+            entry: *entry,
+            knots,
+        })
+        .collect();
+    let slice = SliceContents {
+        payload_kg: arm.payload.mass_kg as f32,
+        branches: &branches,
+        stretches,
+    };
+    let contents = Contents {
+        header,
+        slices: &[slice],
+    };
     let mut bytes = vec![0; buffer_len(&contents)];
     let len = write(&contents, &mut bytes).map_err(TabulationError::Write)?;
     bytes.truncate(len);

@@ -5,6 +5,7 @@
 //! by the build).
 
 mod data;
+mod gather;
 mod json;
 mod text;
 
@@ -12,6 +13,8 @@ pub use data::{
     Arm, Branch, BranchPoint, Drive, End, FalseFriend, Fold, Frame, FrameState, Limit, ReportData,
     Stretch, WorstError,
 };
+
+pub use gather::gather;
 
 const PAGE: &str = include_str!("page/report.html");
 const STYLE: &str = include_str!("page/report.css");
