@@ -1,11 +1,9 @@
 //! Arms from dimensionless numbers, and their rest states.
 
-use crate::tolerances::{ASKED, ASKED_OF_SOFTEST, SOFTEST};
-use table_gen::arm_file::{
-    Accuracy, Arm, Base, Drive, Payload, Profile, STANDARD_GRAVITY_M_S2, Spine, Tendons,
-};
-use table_gen::rest_states::RestStates;
+use crate::tolerances::ASKED;
+use table_gen::arm_file::{Accuracy, Arm, Drive, Profile, STANDARD_GRAVITY_M_S2, parse};
 use table_gen::rest_states::curve::{RestPoint, Solver};
+use table_gen::rest_states::{RestStates, RestStatesError};
 use table_gen::rod::Rod;
 
 /// Half the setpoint range searched around a held tip angle (rad).
@@ -23,25 +21,16 @@ pub struct UniformArm {
     pub tip_fraction: f64,
     /// Base tilt from the upward vertical (rad).
     pub tilt_rad: f64,
-    /// Accuracy asked of angles (rad) and of couples and energies (m g L).
-    pub accuracy: f64,
 }
 
 impl UniformArm {
-    /// As accurate as the comparison with reference values needs.
-    pub fn new(gamma: f64, tip_fraction: f64, tilt_rad: f64) -> Self {
-        let accuracy = if gamma < SOFTEST { ASKED_OF_SOFTEST } else { ASKED };
-        Self {
-            gamma,
-            tip_fraction,
-            tilt_rad,
-            accuracy,
-        }
-    }
-
     /// Upright, all mass at the tip.
     pub fn with_tip_mass(gamma: f64) -> Self {
-        Self::new(gamma, 1.0, 0.0)
+        Self {
+            gamma,
+            tip_fraction: 1.0,
+            tilt_rad: 0.0,
+        }
     }
 
     /// With the tip held within [`TIP_ANGLE_REACH_RAD`] of `tip_angle_rad`.
@@ -61,42 +50,50 @@ impl UniformArm {
     }
 
     fn driven(self, drive: Drive) -> Arm {
-        Arm {
-            name: format!("uniform arm, gamma {}", self.gamma),
-            spine: Spine {
-                length_m: 1.0,
-                bending_stiffness_n_m2: Profile::constant(self.gamma * STANDARD_GRAVITY_M_S2),
-                mass_per_length_kg_m: Profile::constant(1.0 - self.tip_fraction),
-                rest_curvature_rad_m: Profile::constant(0.0),
-                thickness_m: 0.001,
-                allowed_strain: 0.01,
-                damping_ratio: 0.03,
-            },
-            lumps: vec![],
-            payload: Payload {
-                mass_kg: self.tip_fraction,
-            },
-            base: Base {
-                tilt_rad: self.tilt_rad,
-            },
-            tendons: Tendons {
-                offset_m: 0.01,
-                pretension_n: 1.0,
-                max_tension_n: 100.0,
-            },
-            drive,
-            accuracy: Accuracy {
-                angle_rad: self.accuracy,
-                couple_fraction: self.accuracy,
-            },
-        }
+        let mut arm = plain();
+        arm.name = format!("uniform arm, gamma {}", self.gamma);
+        arm.spine.bending_stiffness_n_m2 = Profile::constant(self.gamma * STANDARD_GRAVITY_M_S2);
+        arm.spine.mass_per_length_kg_m = Profile::constant(1.0 - self.tip_fraction);
+        carry(&mut arm, self.tip_fraction);
+        arm.base.tilt_rad = self.tilt_rad;
+        arm.drive = drive;
+        arm
     }
 }
 
-/// The certified rest states of `arm`.
+/// An upright arm of 1 m and 1 kg without tolerances, to be changed.
+pub fn plain() -> Arm {
+    parse(include_str!("plain_arm.toml"), "plain_arm.toml")
+        .unwrap_or_else(|error| panic!("{error}"))
+}
+
+/// Makes `arm` carry `payload_kg`, no more and no less.
+pub fn carry(arm: &mut Arm, payload_kg: f64) {
+    arm.payload.mass_kg = payload_kg;
+    arm.payload.range_kg = [payload_kg; 2];
+}
+
+/// The certified rest states of `arm`, with the tightest of the accuracies [`ASKED`] that the most
+/// modes reach.
 pub fn rest_states(arm: &Arm) -> RestStates {
-    RestStates::find(&Rod::new(arm), &arm.accuracy, arm.gamma())
-        .unwrap_or_else(|error| panic!("{}: {error}", arm.name))
+    let rod = Rod::new(arm);
+    let mut refusal = None;
+    for asked in ASKED {
+        let accuracy = Accuracy {
+            angle_rad: asked,
+            couple_fraction: asked,
+        };
+        match RestStates::find(&rod, &accuracy, arm.gamma()) {
+            Ok(rest) => return rest,
+            Err(error @ RestStatesError::TooSoft { .. }) => refusal = Some(error),
+            Err(error) => panic!("{}: {error}", arm.name),
+        }
+    }
+    panic!(
+        "{}: {}",
+        arm.name,
+        refusal.expect("some accuracy was asked")
+    );
 }
 
 /// Every rest state at `setpoint` (rad or m g L), by base curvature.

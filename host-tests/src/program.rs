@@ -28,7 +28,10 @@ pub fn table_gen() -> &'static Path {
         }
         let output = cargo.output().expect("cargo runs");
         let errors = String::from_utf8_lossy(&output.stderr);
-        assert!(output.status.success(), "table-gen does not build:\n{errors}");
+        assert!(
+            output.status.success(),
+            "table-gen does not build:\n{errors}"
+        );
         String::from_utf8_lossy(&output.stdout)
             .lines()
             .filter_map(|line| serde_json::from_str::<Value>(line).ok())

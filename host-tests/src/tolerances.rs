@@ -1,18 +1,25 @@
 //! Every tolerance of the checks, each with its reason.
 
-/// Accuracy asked of the rest states that are compared with reference values (rad, m g L). The number
-/// of modes rises until no rest state is further than a quarter of it from the exact one.
-pub const ASKED: f64 = 1e-7;
-
-/// The same where 24 modes do not reach [`ASKED`] (gamma .01): its quarter is still below
-/// [`REST_STATE`].
-pub const ASKED_OF_SOFTEST: f64 = 3e-6;
-/// Stiffness below which [`ASKED_OF_SOFTEST`] is asked.
-pub const SOFTEST: f64 = 0.015;
+/// Accuracies asked of rest states that are compared with reference values (rad, m g L), the tightest
+/// first. The number of modes rises until no rest state is further than a quarter of it from the
+/// exact one, and 24 modes do not reach 1e-7 where the arm is very soft (gamma .02 and less) or also
+/// has tightly curled rest states. The comparison decides whether what was reached is enough.
+pub const ASKED: [f64; 5] = [1e-7, 1e-6, 3e-6, 1e-4, 4e-4];
 
 /// Rest states against reference values: angles (rad), lengths (L), couples and energies (m g L).
-/// The project's promise; [`ASKED`] leaves a factor of 40 for what the audit does not look at.
+/// The project's promise.
 pub const REST_STATE: f64 = 1e-6;
+
+/// The fold at gamma .01 in 24 modes, the most there are: the modes are off by 7.3e-5 in the mean
+/// angle, 4e-6 in the couple and 3e-6 in the setpoint, where the wave length along the arm is a
+/// tenth of it. The shooting, against which every table is audited, keeps to [`REST_STATE`] there.
+pub const SOFTEST_FOLD: f64 = 1e-4;
+/// Stiffness below which [`SOFTEST_FOLD`] holds instead of [`REST_STATE`].
+pub const SOFTEST: f64 = 0.015;
+
+/// Accuracy asked of a shooting whose folds are compared (rad, m g L): a hundredth of
+/// [`REST_STATE`].
+pub const SHOOTING: f64 = 1e-8;
 
 /// Critical stiffness, absolute in gamma. The project's promise; bisection to 1e-9 and 24 modes,
 /// whose error is far below, leave it to the discretisation.
@@ -56,3 +63,23 @@ pub const DENSE_SCAN: f64 = 1e-9;
 /// Base curvature of the shots against reference values: it is up to 20 and the shots' angles are
 /// within 1e-8, near a fold less.
 pub const BASE_CURVATURE: f64 = 1e-5;
+
+/// Central differences with a step of 1e-5 rad: 1e-10 times third derivatives of up to 1 m g L, and
+/// rounding of energies and forces of up to 100 m g L over the step.
+pub const FINITE_DIFFERENCE: f64 = 5e-9;
+
+/// Energy by 20 000 midpoints (m g L): a piece in which a profile has a kink is off by its width
+/// squared, the rest by the same times derivatives of up to 100.
+pub const ENERGY_BY_MASSES: f64 = 1e-6;
+
+/// Arms of other sizes at equal gamma: the same arithmetic up to rounding, which the way to the rest
+/// state amplifies; Newton's last step is below 1e-8 and squares.
+pub const SCALED: f64 = 1e-9;
+
+/// Setpoints this near to a fold are left out where two solutions are compared (rad or m g L): there
+/// the distance of rest states grows like the root of any difference.
+pub const BESIDE_A_FOLD: f64 = 1e-3;
+
+/// Values printed with four decimals: half a unit of the last, and what an accuracy of .03 degrees
+/// adds.
+pub const PRINTED_FOUR_DECIMALS: f64 = 0.5e-4 + 1.3e-4;

@@ -21,7 +21,10 @@ fn affine(q0: f64, q1: f64) -> [f64; 2] {
 }
 
 fn upright(modes: usize) -> ModalRod {
-    ModalRod::new(&Rod::new(&UniformArm::with_tip_mass(1.0).held_tip(0.0)), modes)
+    ModalRod::new(
+        &Rod::new(&UniformArm::with_tip_mass(1.0).held_tip(0.0)),
+        modes,
+    )
 }
 
 #[track_caller]
@@ -43,7 +46,12 @@ fn two_coordinate_arm_is_a_clothoid() {
         assert_near(modal.angle(&c, 1.0), q0, CLOTHOID, &what);
         assert_near(mean_angle(&c), q1, CLOTHOID, &what);
         // q1 from a sensor half way along.
-        assert_near((modal.angle(&c, 0.5) + 0.25 * q0) / 1.5, q1, CLOTHOID, &what);
+        assert_near(
+            (modal.angle(&c, 0.5) + 0.25 * q0) / 1.5,
+            q1,
+            CLOTHOID,
+            &what,
+        );
         assert_near(base_curvature(&c), 6.0 * q1 - 2.0 * q0, CLOTHOID, &what);
         let tip = [number(&row["x_tip"]), number(&row["y_tip"])];
         let (x, y) = modal.tip(&c);
@@ -72,7 +80,12 @@ fn arm_straight_at_the_base_ends_at_the_fresnel_integrals() {
         for (found, key, place) in [(x * tip_y, "C", 0), (x * tip_x, "S", 1)] {
             assert_near(found, number(&row[key]), CLOTHOID, &format!("{key}({x})"));
             let printed = number(&row["book_from_memory"][place]);
-            assert_near(found, printed, PRINTED_SEVEN_DECIMALS, &format!("printed {key}({x})"));
+            assert_near(
+                found,
+                printed,
+                PRINTED_SEVEN_DECIMALS,
+                &format!("printed {key}({x})"),
+            );
         }
     }
 }

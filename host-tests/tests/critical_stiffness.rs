@@ -15,7 +15,11 @@ fn reference() -> Value {
 }
 
 fn upright(gamma: f64, tip_fraction: f64, held: Held) -> Rod {
-    let arm = UniformArm::new(gamma, tip_fraction, 0.0);
+    let arm = UniformArm {
+        gamma,
+        tip_fraction,
+        tilt_rad: 0.0,
+    };
     Rod::new(&match held {
         Held::TipAngle => arm.held_tip(0.0),
         Held::TipCouple => arm.applied_couple(0.0),
@@ -32,16 +36,25 @@ fn index_in_modes(rod: &Rod) -> usize {
 
 /// The same by conjugate points of the shot that leaves the base straight.
 fn index_by_shooting(rod: &Rod) -> usize {
-    Shooting::scan(rod, [0.0, 0.0], CRITICAL_STIFFNESS).shoot(0.0).index
+    Shooting::scan(rod, [0.0, 0.0], CRITICAL_STIFFNESS)
+        .shoot(0.0)
+        .index
 }
 
 /// Highest gamma at which more than `order` directions are unstable.
 fn critical_gamma(index: impl Fn(f64) -> usize, order: usize) -> f64 {
     let (mut soft, mut stiff) = (1e-4, 1.0);
-    assert!(index(soft) > order && index(stiff) <= order, "the bracket holds the loss of stability");
+    assert!(
+        index(soft) > order && index(stiff) <= order,
+        "the bracket holds the loss of stability"
+    );
     while stiff - soft > BISECTION {
         let middle = 0.5 * (soft + stiff);
-        if index(middle) > order { soft = middle } else { stiff = middle }
+        if index(middle) > order {
+            soft = middle
+        } else {
+            stiff = middle
+        }
     }
     0.5 * (soft + stiff)
 }
@@ -56,13 +69,20 @@ fn assert_critical(found: f64, expected: f64, what: &str) {
 
 fn check_modes(tip_fraction: f64, held: Held, order: usize, expected: f64) {
     let found = critical_gamma(|g| index_in_modes(&upright(g, tip_fraction, held)), order);
-    assert_critical(found, expected, &format!("{held:?}, tip fraction {tip_fraction}, order {order}"));
+    assert_critical(
+        found,
+        expected,
+        &format!("{held:?}, tip fraction {tip_fraction}, order {order}"),
+    );
 }
 
 /// Timoshenko and Gere, Theory of Elastic Stability, 2nd ed. 1961, ch. 2 (from memory).
 #[test]
 fn tip_mass_alone_is_eulers_column_in_every_order() {
-    for (order, gamma) in list(&reference()["euler"]["higher_gamma"]).iter().enumerate() {
+    for (order, gamma) in list(&reference()["euler"]["higher_gamma"])
+        .iter()
+        .enumerate()
+    {
         check_modes(1.0, Held::TipCouple, order, number(gamma));
     }
 }
@@ -77,13 +97,22 @@ fn own_weight_alone_is_greenhills_column_in_every_order() {
     // The printed 7.837 has three decimals.
     let found = critical_gamma(|g| index_in_modes(&upright(g, 0.0, Held::TipCouple)), 0);
     let printed = number(&greenhill["q_l3_over_b_printed"]);
-    assert!((1.0 / found - printed).abs() <= 0.5e-3, "{} against the printed {printed}", 1.0 / found);
+    assert!(
+        (1.0 / found - printed).abs() <= 0.5e-3,
+        "{} against the printed {printed}",
+        1.0 / found
+    );
 }
 
 #[test]
 fn mixes_of_tip_mass_and_own_weight_with_the_tip_free() {
     for row in rows(&reference()["free_tip"]) {
-        check_modes(number(&row["tip_fraction"]), Held::TipCouple, 0, number(&row["gamma_cr"]));
+        check_modes(
+            number(&row["tip_fraction"]),
+            Held::TipCouple,
+            0,
+            number(&row["gamma_cr"]),
+        );
     }
 }
 
@@ -91,7 +120,12 @@ fn mixes_of_tip_mass_and_own_weight_with_the_tip_free() {
 fn mixes_of_tip_mass_and_own_weight_with_the_tip_held_in_every_order() {
     for row in rows(&reference()["held_tip"]) {
         for (order, gamma) in list(&row["first3"]).iter().enumerate() {
-            check_modes(number(&row["tip_fraction"]), Held::TipAngle, order, number(gamma));
+            check_modes(
+                number(&row["tip_fraction"]),
+                Held::TipAngle,
+                order,
+                number(gamma),
+            );
         }
     }
 }
@@ -105,7 +139,11 @@ fn conjugate_points_appear_at_the_critical_stiffness() {
             let (fraction, critical) = (number(&row["tip_fraction"]), number(&row["gamma_cr"]));
             let index = |gamma| index_by_shooting(&upright(gamma, fraction, held));
             let beside = [critical - CRITICAL_STIFFNESS, critical + CRITICAL_STIFFNESS];
-            assert_eq!(beside.map(index), [1, 0], "{held:?}, tip fraction {fraction}");
+            assert_eq!(
+                beside.map(index),
+                [1, 0],
+                "{held:?}, tip fraction {fraction}"
+            );
         }
     }
 }

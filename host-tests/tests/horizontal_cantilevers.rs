@@ -18,7 +18,11 @@ fn reference() -> Value {
 /// Tip deflection, loss of reach and tip slope of the stable shape whose tip sags least: the one that
 /// grows out of the unloaded arm. A very soft arm may also rest curled up the other way round.
 fn sagging(gamma: f64, tip_fraction: f64) -> [f64; 3] {
-    let arm = UniformArm::new(gamma, tip_fraction, FRAC_PI_2);
+    let arm = UniformArm {
+        gamma,
+        tip_fraction,
+        tilt_rad: FRAC_PI_2,
+    };
     let rest = rest_states(&arm.applied_couple(0.0));
     let states = states_at(&rest, 0.0);
     let sagging = states
@@ -64,7 +68,10 @@ fn tip_load_agrees_with_printed_values_from_memory() {
     let mut compared = 0;
     for row in printed {
         let found = sagging(number(&row["gamma"]), 1.0);
-        for (found, printed) in found.into_iter().zip(list(&row["book_from_memory_w_u_slope"])) {
+        for (found, printed) in found
+            .into_iter()
+            .zip(list(&row["book_from_memory_w_u_slope"]))
+        {
             let printed = number(printed);
             assert!(
                 (found - printed).abs() <= PRINTED_FIVE_DECIMALS,

@@ -11,10 +11,23 @@ use std::f64::consts::PI;
 fn leaning(gamma: f64) -> [f64; 5] {
     let rest = rest_states(&UniformArm::with_tip_mass(gamma).applied_couple(0.0));
     let states = states_at(&rest, 0.0);
-    let leaning: Vec<_> = states.iter().filter(|s| s.index == 0 && s.mean_angle() > 0.0).collect();
-    assert_eq!(leaning.len(), 1, "one stable shape leans towards +x at gamma {gamma}");
+    let leaning: Vec<_> = states
+        .iter()
+        .filter(|s| s.index == 0 && s.mean_angle() > 0.0)
+        .collect();
+    assert_eq!(
+        leaning.len(),
+        1,
+        "one stable shape leans towards +x at gamma {gamma}"
+    );
     let (x, y) = rest.modal.tip(&leaning[0].c);
-    [leaning[0].tip_angle(), x, y, leaning[0].mean_angle(), leaning[0].energy]
+    [
+        leaning[0].tip_angle(),
+        x,
+        y,
+        leaning[0].mean_angle(),
+        leaning[0].energy,
+    ]
 }
 
 fn reference() -> Value {

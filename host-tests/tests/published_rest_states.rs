@@ -4,11 +4,12 @@
 
 use host_tests::arms::{UniformArm, rest_states, states_at};
 use host_tests::reference::{list, number, parse, rows};
-use host_tests::tolerances::{BASE_CURVATURE, REST_STATE};
+use host_tests::tolerances::{BASE_CURVATURE, REST_STATE, SHOOTING, SOFTEST, SOFTEST_FOLD};
 use serde_json::Value;
 use table_gen::arm_file::Arm;
 use table_gen::rest_states::curve::RestPoint;
 use table_gen::rest_states::degree_sum;
+use table_gen::rest_states::shooting::Shooting;
 use table_gen::rest_states::wells::wells;
 
 fn off(found: f64, expected: f64, tolerance: f64, what: &str) -> Option<String> {
@@ -24,27 +25,55 @@ fn none(complaints: Vec<String>) {
 }
 
 /// Compares all rest states of `arm` at `setpoint` with `row`, by base curvature.
-fn complaints(arm: &Arm, setpoint: f64, row: &Value, conjugate: (&str, fn(&RestPoint) -> f64)) -> Vec<String> {
+fn complaints(
+    arm: &Arm,
+    setpoint: f64,
+    row: &Value,
+    conjugate: (&str, fn(&RestPoint) -> f64),
+) -> Vec<String> {
     let what = format!("gamma {}, setpoint {setpoint:.3}", row["gamma"]);
     let rest = rest_states(arm);
     let states = states_at(&rest, setpoint);
     let expected = list(&row["equilibria"]);
     let found: Vec<_> = states.iter().map(|s| s.index as u64).collect();
-    let indices: Vec<_> = expected.iter().map(|e| e["index"].as_u64().expect("an index")).collect();
+    let indices: Vec<_> = expected
+        .iter()
+        .map(|e| e["index"].as_u64().expect("an index"))
+        .collect();
     assert_eq!(found, indices, "{what}: Morse indices by base curvature");
     assert_eq!(degree_sum(states.iter().map(|s| s.index)), 1, "{what}");
     let shots = rest.shooting.rest_states(setpoint);
-    assert_eq!(shots.len(), expected.len(), "{what}: rest states by shooting");
+    assert_eq!(
+        shots.len(),
+        expected.len(),
+        "{what}: rest states by shooting"
+    );
     let mut complaints = Vec::new();
     for ((state, shot), expected) in states.iter().zip(&shots).zip(expected) {
         let (x, y) = rest.modal.tip(&state.c);
         let (key, value) = conjugate;
-        let found = [("q1", state.mean_angle()), ("E", state.energy), ("x", x), ("y", y), (key, value(state))];
+        let found = [
+            ("q1", state.mean_angle()),
+            ("E", state.energy),
+            ("x", x),
+            ("y", y),
+            (key, value(state)),
+        ];
         for (key, found) in found {
-            complaints.extend(off(found, number(&expected[key]), REST_STATE, &format!("{what}, {key}")));
+            complaints.extend(off(
+                found,
+                number(&expected[key]),
+                REST_STATE,
+                &format!("{what}, {key}"),
+            ));
         }
         let base = number(&expected["dalpha0"]);
-        complaints.extend(off(shot.base_curvature, base, BASE_CURVATURE, &format!("{what}, base curvature")));
+        complaints.extend(off(
+            shot.base_curvature,
+            base,
+            BASE_CURVATURE,
+            &format!("{what}, base curvature"),
+        ));
     }
     complaints
 }
@@ -59,7 +88,12 @@ fn every_rest_state_with_the_tip_held() {
     for row in rows(&rest_state_reference()["held_tip"]) {
         let setpoint = number(&row["q0"]);
         let arm = UniformArm::with_tip_mass(number(&row["gamma"])).held_tip(setpoint);
-        all.extend(complaints(&arm, setpoint, row, ("tau", |state| state.couple)));
+        all.extend(complaints(
+            &arm,
+            setpoint,
+            row,
+            ("tau", |state| state.couple),
+        ));
     }
     none(all);
 }
@@ -70,31 +104,63 @@ fn every_rest_state_with_the_couple_applied() {
     for row in rows(&rest_state_reference()["applied_couple"]) {
         let setpoint = number(&row["tau"]);
         let arm = UniformArm::with_tip_mass(number(&row["gamma"])).applied_couple(setpoint);
-        all.extend(complaints(&arm, setpoint, row, ("q0", RestPoint::tip_angle)));
+        all.extend(complaints(
+            &arm,
+            setpoint,
+            row,
+            ("q0", RestPoint::tip_angle),
+        ));
     }
     none(all);
 }
 
-/// Compares the fold of `arm` nearest in mean angle with `row`.
+/// Compares the fold of `arm` nearest in mean angle with `row`, in curvature modes and by shooting.
 fn fold_complaints(arm: &Arm, row: &Value) -> Vec<String> {
     let rest = rest_states(arm);
-    let mean_angle = number(&row["q1_fold"]);
-    let distance = |mean: f64| (mean - mean_angle).abs();
+    let expected = number(&row["q1_fold"]);
+    let nearer = |a: f64, b: f64| (a - expected).abs().total_cmp(&(b - expected).abs());
     let fold = rest
         .folds
         .iter()
-        .min_by(|a, b| distance(a.point.mean_angle()).total_cmp(&distance(b.point.mean_angle())))
+        .map(|fold| &fold.point)
+        .min_by(|a, b| nearer(a.mean_angle(), b.mean_angle()))
         .unwrap_or_else(|| panic!("{}: no fold", arm.name));
+    let shooting = Shooting::scan(&rest.rod, rest.rod.setpoints, SHOOTING);
+    let shot = shooting
+        .folds()
+        .iter()
+        .min_by(|a, b| nearer(a.mean_angle, b.mean_angle))
+        .unwrap_or_else(|| panic!("{}: no fold by shooting", arm.name));
     let couple = row.get("tau").or(row.get("tau_fold")).expect("a couple");
-    let what = format!("{} ({} modes)", arm.name, rest.modal.modes());
+    let modes = if arm.gamma() < SOFTEST {
+        SOFTEST_FOLD
+    } else {
+        REST_STATE
+    };
     [
-        ("tip angle", fold.point.tip_angle(), &row["q0_fold"]),
-        ("mean angle", fold.point.mean_angle(), &row["q1_fold"]),
-        ("energy", fold.point.energy, &row["E"]),
-        ("couple", fold.point.couple, couple),
+        ("tip angle", fold.tip_angle(), modes, &row["q0_fold"]),
+        ("mean angle", fold.mean_angle(), modes, &row["q1_fold"]),
+        ("energy", fold.energy, REST_STATE, &row["E"]),
+        ("couple", fold.couple, modes, couple),
+        (
+            "tip angle by shooting",
+            shot.tip_angle,
+            REST_STATE,
+            &row["q0_fold"],
+        ),
+        (
+            "mean angle by shooting",
+            shot.mean_angle,
+            REST_STATE,
+            &row["q1_fold"],
+        ),
+        ("couple by shooting", shot.couple, REST_STATE, couple),
     ]
     .into_iter()
-    .filter_map(|(key, found, expected)| off(found, number(expected), REST_STATE, &format!("{what}, {key}")))
+    .filter_map(|(key, found, tolerance, expected)| {
+        let what = format!("{}, {} modes, {key}", arm.name, rest.modal.modes());
+        off(found, number(expected), tolerance, &what)
+    })
     .collect()
 }
 
@@ -117,7 +183,10 @@ fn folds_with_the_couple_applied() {
     let mut all = Vec::new();
     for row in rows(&fold_reference()["applied_couple"]) {
         let arm = UniformArm::with_tip_mass(number(&row["gamma"]));
-        all.extend(fold_complaints(&arm.applied_couple(number(&row["tau_fold"])), row));
+        all.extend(fold_complaints(
+            &arm.applied_couple(number(&row["tau_fold"])),
+            row,
+        ));
     }
     none(all);
 }
@@ -128,16 +197,29 @@ fn barriers_with_the_tip_held() {
     for row in rows(&parse(include_str!("../reference/barriers.json"))["held_tip"]) {
         let setpoint = number(&row["q0"]);
         let what = format!("gamma {}, setpoint {setpoint:.3}", row["gamma"]);
-        let rest = rest_states(&UniformArm::with_tip_mass(number(&row["gamma"])).held_tip(setpoint));
+        let rest =
+            rest_states(&UniformArm::with_tip_mass(number(&row["gamma"])).held_tip(setpoint));
         let states = states_at(&rest, setpoint);
         let wells = wells(&rest.modal, &states).expect("a way down from every pass");
-        let stable: Vec<usize> = (0..states.len()).filter(|&i| states[i].index == 0).collect();
+        let stable: Vec<usize> = (0..states.len())
+            .filter(|&i| states[i].index == 0)
+            .collect();
         let expected = list(&row["states"]);
         assert_eq!(stable.len(), expected.len(), "{what}: wells");
         for (&place, expected) in stable.iter().zip(expected) {
             let barrier = wells.barrier[place].expect("a pass leads out of each of two wells");
-            all.extend(off(states[place].mean_angle(), number(&expected["q1"]), REST_STATE, &what));
-            all.extend(off(barrier, number(&expected["barrier"]), REST_STATE, &what));
+            all.extend(off(
+                states[place].mean_angle(),
+                number(&expected["q1"]),
+                REST_STATE,
+                &what,
+            ));
+            all.extend(off(
+                barrier,
+                number(&expected["barrier"]),
+                REST_STATE,
+                &what,
+            ));
         }
     }
     none(all);

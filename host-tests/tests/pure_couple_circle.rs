@@ -13,7 +13,11 @@ use table_gen::rod::Rod;
 const WEIGHTLESS: f64 = 100.0 / CIRCLE;
 
 fn rod(tilt_rad: f64) -> Rod {
-    let arm = UniformArm::new(WEIGHTLESS, 0.5, tilt_rad);
+    let arm = UniformArm {
+        gamma: WEIGHTLESS,
+        tip_fraction: 0.5,
+        tilt_rad,
+    };
     Rod::new(&arm.applied_couple(0.0))
 }
 
@@ -33,15 +37,25 @@ fn couple_alone_bends_the_arm_into_a_circle() {
     let straight = ModalRod::new(&rod, 6);
     for row in rows(&parse(include_str!("../reference/pure_couple_circle.json"))) {
         let couple = number(&row["ML_EI"]) * WEIGHTLESS;
-        let state = Solver::new(&modal).at_setpoint(&[0.0; 6], couple).expect("a rest state");
+        let state = Solver::new(&modal)
+            .at_setpoint(&[0.0; 6], couple)
+            .expect("a rest state");
         assert_eq!(state.index, 0, "a couple alone leaves the arm stable");
         let (x, y) = straight.tip(&state.c);
         assert_near(state.tip_angle(), number(&row["tip_angle"]), "tip angle");
-        assert_near(state.mean_angle(), 0.5 * number(&row["tip_angle"]), "mean angle");
+        assert_near(
+            state.mean_angle(),
+            0.5 * number(&row["tip_angle"]),
+            "mean angle",
+        );
         assert_near(x, number(&row["x_over_L"]), "tip x");
         assert_near(y, number(&row["y_over_L"]), "tip y");
         let energy = state.energy / WEIGHTLESS;
-        assert_near(energy, number(&row["bending_energy_over_EI_L"]), "bending energy");
+        assert_near(
+            energy,
+            number(&row["bending_energy_over_EI_L"]),
+            "bending energy",
+        );
     }
 }
 

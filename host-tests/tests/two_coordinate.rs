@@ -32,13 +32,32 @@ fn every_two_coordinate_rest_state_with_the_tip_held() {
         assert_eq!(found.len(), expected.len(), "{what}: number of rest states");
         let mut at = Evaluation::new(2);
         for (state, expected) in found.iter().zip(expected) {
-            assert_near(state.mean_angle(), number(&expected["q1"]), TWO_COORDINATE, &what);
+            assert_near(
+                state.mean_angle(),
+                number(&expected["q1"]),
+                TWO_COORDINATE,
+                &what,
+            );
             assert_near(state.energy, number(&expected["E"]), TWO_COORDINATE, &what);
-            assert_eq!(Some(state.is_stable()), expected["affine_stable"].as_bool(), "{what}: stable");
+            assert_eq!(
+                Some(state.is_stable()),
+                expected["affine_stable"].as_bool(),
+                "{what}: stable"
+            );
             modal.evaluate(&state.c, &mut at);
-            assert_near(at.gradient[0], number(&expected["tau"]), TWO_COORDINATE, &what);
+            assert_near(
+                at.gradient[0],
+                number(&expected["tau"]),
+                TWO_COORDINATE,
+                &what,
+            );
             // Second derivative along q1 = c_0/2 - c_1/6 at fixed c_0.
-            assert_near(36.0 * at.hessian[(1, 1)], number(&expected["d2E"]), TWO_COORDINATE, &what);
+            assert_near(
+                36.0 * at.hessian[(1, 1)],
+                number(&expected["d2E"]),
+                TWO_COORDINATE,
+                &what,
+            );
             let (x, y) = modal.tip(&state.c);
             assert_near(x, number(&expected["x"]), TWO_COORDINATE, &what);
             assert_near(y, number(&expected["y"]), TWO_COORDINATE, &what);
@@ -64,7 +83,11 @@ fn scanned(modal: &ModalRod, tip_angle: f64, reach: f64) -> Vec<f64> {
             let (mut low, mut high) = (place(k - 1), place(k));
             for _ in 0..60 {
                 let middle = 0.5 * (low + high);
-                if (force(middle) < 0.0) == (before < 0.0) { low = middle } else { high = middle }
+                if (force(middle) < 0.0) == (before < 0.0) {
+                    low = middle
+                } else {
+                    high = middle
+                }
             }
             found.push(0.5 * (low + high));
         }
@@ -76,7 +99,7 @@ fn scanned(modal: &ModalRod, tip_angle: f64, reach: f64) -> Vec<f64> {
 }
 
 proptest! {
-    #![proptest_config(ProptestConfig { cases: 60, failure_persistence: None, ..ProptestConfig::default() })]
+    #![proptest_config(random_arms::draws(60))]
 
     /// Soft arms on purpose: they have many rest states.
     #[test]

@@ -87,6 +87,16 @@ impl Rod {
         self.rest_curvature.at(s)
     }
 
+    /// Distributed mass per arc length at `s`, as a fraction of the arm's mass.
+    pub fn mass_per_length(&self, s: f64) -> f64 {
+        self.mass_per_length.at(s)
+    }
+
+    /// `(s, fraction of the mass)` of every point mass, the payload at 1 included.
+    pub fn point_masses(&self) -> &[(f64, f64)] {
+        &self.point_masses
+    }
+
     /// Fraction of the mass outboard of `s`, where `s` lies inside a panel whose far end is `panel_end` (point masses at
     /// either end of the panel count as outboard of its inside exactly when they lie at or beyond the far end).
     pub fn outboard(&self, s: f64, panel_end: f64) -> f64 {

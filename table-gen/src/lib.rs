@@ -13,6 +13,8 @@
 pub mod arm_file;
 #[path = "8_build.rs"]
 mod build;
+#[path = "4_margins/mod.rs"]
+pub mod margins;
 #[path = "7_report/mod.rs"]
 pub mod report;
 #[path = "3_rest_states/mod.rs"]

@@ -4,8 +4,12 @@
 mod build;
 #[path = "commands/equilibria.rs"]
 mod equilibria;
+#[path = "commands/setpoint.rs"]
+mod setpoint;
 #[path = "commands/show.rs"]
 mod show;
+#[path = "commands/why.rs"]
+mod why;
 
 use clap::{Parser, Subcommand};
 use std::io::IsTerminal;
@@ -28,6 +32,8 @@ enum Command {
     Equilibria(equilibria::Arguments),
     /// Show what a table holds, or what the firmware answers from it at a setpoint.
     Show(show::Arguments),
+    /// Judge one setpoint: every requirement with its value, limit and worst corner, and the nearest usable setpoint.
+    Why(why::Arguments),
 }
 
 /// Why a command ended early: the message for people and the exit code.
@@ -76,6 +82,7 @@ fn main() -> ExitCode {
         Command::Build(arguments) => build::run(&arguments),
         Command::Equilibria(arguments) => equilibria::run(&arguments),
         Command::Show(arguments) => show::run(&arguments),
+        Command::Why(arguments) => why::run(&arguments),
     };
     match done {
         Ok(()) => ExitCode::SUCCESS,

@@ -87,12 +87,7 @@ impl<'a> Table<'a> {
     }
 
     /// Length of the table in bytes.
-    pub const fn len(&self) -> usize {
+    pub const fn byte_len(&self) -> usize {
         self.bytes.len()
-    }
-
-    /// Never true: a checked table holds at least one slice.
-    pub const fn is_empty(&self) -> bool {
-        self.bytes.is_empty()
     }
 }

@@ -15,7 +15,7 @@ fn what_is_written_is_read() {
     let bytes = draft.bytes();
     let table = Table::new(&bytes).expect("a sound table");
     assert_eq!(table.header(), Ok(draft.header));
-    assert_eq!(table.len(), bytes.len());
+    assert_eq!(table.byte_len(), bytes.len());
     assert_eq!(table.slices().count(), draft.slices.len());
     for (slice, written) in table.slices().zip(&draft.slices) {
         assert_eq!(slice.payload_kg, written.payload_kg);

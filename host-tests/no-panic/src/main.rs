@@ -56,7 +56,7 @@ fn exercise(bytes: &[u8]) {
         Ok(table) => black_box(table),
         Err(error) => return say(&error),
     };
-    black_box((table.limits(), table.len(), table.is_empty()));
+    black_box((table.limits(), table.byte_len()));
     match table.header() {
         Ok(header) => {
             black_box(header);

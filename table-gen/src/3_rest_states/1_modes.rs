@@ -63,7 +63,7 @@ pub(crate) fn legendre(n: usize, x: f64) -> Vec<f64> {
 }
 
 /// `phi_0..phi_{n-1}` at `s`.
-fn angle_modes(n: usize, s: f64) -> Vec<f64> {
+pub(crate) fn angle_modes(n: usize, s: f64) -> Vec<f64> {
     let p = legendre(n, 2.0 * s - 1.0);
     (0..n)
         .map(|i| {
@@ -119,6 +119,48 @@ impl ModalRod {
         self.gravity_weight
             .push(weight * rod.outboard(s, panel_end));
         self.phi.extend(angle_modes(self.n, s));
+    }
+
+    /// The same rod with its bending stiffness multiplied, more payload (as a fraction of the arm's mass; energies and couples
+    /// stay in units of the unchanged m g L) and its base tilted further.
+    pub fn varied(&self, stiffness_factor: f64, more_payload: f64, tilt_change_rad: f64) -> Self {
+        let mut varied = self.clone();
+        varied.bending *= stiffness_factor;
+        varied
+            .rest_load
+            .iter_mut()
+            .for_each(|load| *load *= stiffness_factor);
+        varied.rest_energy *= stiffness_factor;
+        varied
+            .gravity_weight
+            .iter_mut()
+            .zip(&self.weight)
+            .for_each(|(g, w)| *g += more_payload * w);
+        varied.tilt_rad += tilt_change_rad;
+        varied
+    }
+
+    /// Derivative of the gradient with respect to the payload (as a fraction of the arm's mass).
+    pub fn payload_force(&self, c: &[f64]) -> Vec<f64> {
+        let mut force = vec![0.0; self.n];
+        for (phi, &weight) in self.phi.chunks_exact(self.n).zip(&self.weight) {
+            let alpha: f64 = phi.iter().zip(c).map(|(p, c)| p * c).sum();
+            let pull = weight * (self.tilt_rad + alpha).sin();
+            force.iter_mut().zip(phi).for_each(|(f, p)| *f -= pull * p);
+        }
+        force
+    }
+
+    /// Derivative of the gradient with respect to a factor on the bending stiffness.
+    pub fn bending_force(&self, c: &[f64]) -> Vec<f64> {
+        (0..self.n)
+            .map(|i| {
+                (0..self.n)
+                    .map(|j| self.bending[(j, i)] * c[j])
+                    .sum::<f64>()
+                    - self.rest_load[i]
+            })
+            .collect()
     }
 
     /// Number of modes.

@@ -11,6 +11,8 @@ use nalgebra::{DMatrix, DVector};
 
 /// Longest downhill step (rad): short against the distance between rest states, so that no ridge is jumped.
 const LONGEST_STEP: f64 = 0.15;
+/// Growth of the longest step allowed from one step to the next, away from a start where it had to be short.
+const STEP_GROWTH: f64 = 1.3;
 /// Downhill steps before giving up.
 const STEPS: usize = 400;
 /// First step away from the pass along its unstable direction (rad).
@@ -144,9 +146,9 @@ impl<'a> Descent<'a> {
         self.at.energy - self.couple * c[0]
     }
 
-    /// From `c` down to where the gradient vanishes; steps no longer than `longest`. Newton where the potential is convex,
+    /// From `c` down to where the gradient vanishes; the first no longer than `longest`. Newton where the potential is convex,
     /// stiffened by the bending matrix where it is not; every step must lower the potential.
-    pub fn run(&mut self, mut c: Vec<f64>, longest: f64) -> Option<Vec<f64>> {
+    pub fn run(&mut self, mut c: Vec<f64>, mut longest: f64) -> Option<Vec<f64>> {
         let first = self.modal.first_free();
         let free = self.modal.modes() - first;
         let bending = self
@@ -168,6 +170,7 @@ impl<'a> Descent<'a> {
                 return Some(c);
             }
             let mut scale = (longest.min(LONGEST_STEP) / length).min(1.0);
+            longest *= STEP_GROWTH;
             loop {
                 let mut moved = c.clone();
                 for i in 0..free {

@@ -12,6 +12,9 @@ mod stretches;
 mod worst_errors;
 
 use crate::arm_file::Arm;
+use crate::margins::corners::{Corners, Levels};
+use crate::margins::requirements::Assessor;
+use crate::margins::usable::Usable;
 use crate::rest_states::curve::Solver;
 use crate::rest_states::wells::wells;
 use crate::rest_states::{RestStates, RestStatesError};
@@ -35,6 +38,10 @@ pub struct Tabulation {
     pub arm: Arm,
     /// Its certified rest states; branch numbers are positions in `rest.branches`.
     pub rest: RestStates,
+    /// The corners of its tolerances with their rest states.
+    pub corners: Corners,
+    /// What is usable, and everything that was assessed on the way.
+    pub usable: Usable,
     /// Stretches that may be commanded, by branch and setpoint.
     pub stretches: Vec<Stretch>,
     /// Worst differences between the firmware's answers and fresh solves.
@@ -112,7 +119,9 @@ impl From<RestStatesError> for TabulationError {
 pub fn tabulate(arm: &Arm, progress: &mut dyn FnMut(f64)) -> Result<Tabulation, TabulationError> {
     let rod = Rod::new(arm);
     progress(0.0);
-    let rest = RestStates::find(&rod, &arm.accuracy, arm.gamma())?;
+    let corners = Corners::find(arm, Levels::EndsAndMiddle, &|_| {})?;
+    let usable = Usable::find(&Assessor::new(arm, &corners), &mut |_| {})?;
+    let rest = corners.nominal.clone();
     progress(0.3);
     if rest.branches.len() > MOST_BRANCHES {
         return Err(TabulationError::TooManyBranches {
@@ -187,6 +196,8 @@ pub fn tabulate(arm: &Arm, progress: &mut dyn FnMut(f64)) -> Result<Tabulation, 
     Ok(Tabulation {
         arm: arm.clone(),
         rest,
+        corners,
+        usable,
         stretches,
         worst_error: measured.worst,
         worst_barrier_error_j: measured.barrier_j,

@@ -22,10 +22,7 @@ pub struct Arguments {
 pub fn run(arguments: &Arguments) -> Result<(), Failure> {
     let begun = Instant::now();
     let arm = arm_file::read(&arguments.arm).map_err(table_gen::BuildError::from)?;
-    let bar = ProgressBar::new(1000);
-    let style = ProgressStyle::with_template("{bar:40} {percent:>3} %  {elapsed}")
-        .expect("the template is valid");
-    bar.set_style(style);
+    let bar = progress_bar();
     let outputs = Outputs::make(&arm, &mut |done| bar.set_position((1000.0 * done) as u64));
     bar.finish_and_clear();
     let outputs = outputs?;
@@ -43,6 +40,13 @@ pub fn run(arguments: &Arguments) -> Result<(), Failure> {
     );
     println!("Look at {}", directory.join("report.html").display());
     Ok(())
+}
+
+/// A bar of a thousand parts, shown on a terminal only.
+pub fn progress_bar() -> ProgressBar {
+    let style = ProgressStyle::with_template("{bar:40} {percent:>3} %  {elapsed}")
+        .expect("the template is valid");
+    ProgressBar::new(1000).with_style(style)
 }
 
 fn default_directory(arm_file: &Path) -> PathBuf {

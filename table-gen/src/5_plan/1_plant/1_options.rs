@@ -30,7 +30,7 @@ pub struct PlantOptions {
     pub tension: SensorOptions,
     /// Seed of all sensor noise: the same seed, the same readings.
     pub seed: u64,
-    /// Longest integration step, in units of sqrt(L/g), in 0..=0.1. Longer calls of `step` are divided evenly.
+    /// Longest integration step, in units of sqrt(L/g), above 0 to 0.1. Violent motion is followed in shorter ones.
     pub longest_step: f64,
 }
 
@@ -45,7 +45,7 @@ impl Default for PlantOptions {
             mid_angle: SensorOptions::default(),
             tension: SensorOptions::default(),
             seed: 1,
-            longest_step: 0.0125,
+            longest_step: 0.025,
         }
     }
 }
@@ -108,26 +108,43 @@ pub enum SensorFault {
 impl PlantOptions {
     /// Panics with the option and its range when one is outside.
     pub(super) fn check(&self) {
-        let require = |allowed: bool, what: &str| assert!(allowed, "plant option out of range: {what}");
+        let require =
+            |allowed: bool, what: &str| assert!(allowed, "plant option out of range: {what}");
         require(self.modes >= 2, "modes, at least 2");
         require(
-            self.reflected_inertia_kg_m2.is_none_or(|j| j >= 0.0 && j.is_finite()),
+            self.reflected_inertia_kg_m2
+                .is_none_or(|j| j >= 0.0 && j.is_finite()),
             "reflected_inertia_kg_m2, >= 0",
         );
-        require(self.longest_step > 0.0 && self.longest_step <= 0.1, "longest_step, above 0 to 0.1");
+        require(
+            self.longest_step > 0.0 && self.longest_step <= 0.1,
+            "longest_step, above 0 to 0.1",
+        );
         let tendons = self.tendons;
         for (value, name) in [
             (tendons.stiffness_n_m, "tendons.stiffness_n_m, > 0"),
             (tendons.lag_s, "tendons.lag_s, > 0"),
             (tendons.rate_limit_n_s, "tendons.rate_limit_n_s, > 0"),
-            (tendons.winding_speed_limit_m_s, "tendons.winding_speed_limit_m_s, > 0"),
+            (
+                tendons.winding_speed_limit_m_s,
+                "tendons.winding_speed_limit_m_s, > 0",
+            ),
         ] {
             require(value > 0.0 && value.is_finite(), name);
         }
-        require((0.0..1.0).contains(&tendons.friction_fraction), "tendons.friction_fraction, in 0..1");
+        require(
+            (0.0..1.0).contains(&tendons.friction_fraction),
+            "tendons.friction_fraction, in 0..1",
+        );
         for sensor in [self.tip_angle, self.mid_angle, self.tension] {
-            require(sensor.noise >= 0.0 && sensor.noise.is_finite(), "noise of a sensor, >= 0");
-            require(sensor.quantum >= 0.0 && sensor.quantum.is_finite(), "quantum of a sensor, >= 0");
+            require(
+                sensor.noise >= 0.0 && sensor.noise.is_finite(),
+                "noise of a sensor, >= 0",
+            );
+            require(
+                sensor.quantum >= 0.0 && sensor.quantum.is_finite(),
+                "quantum of a sensor, >= 0",
+            );
             require(sensor.bias.is_finite(), "bias of a sensor, finite");
         }
     }

@@ -76,15 +76,24 @@ impl Chain {
         let density = arm.spine.mass_per_length_kg_m.scaled(length_m / mass_kg);
         // A rectangular section: I/A = thickness^2 / 12.
         let gyration2 = (arm.spine.thickness_m / length_m).powi(2) / 12.0;
-        let least = if density.integral_to_tip(0.0) < LIGHT_SPINE { LEAST_SECTION_INERTIA } else { 0.0 };
+        let least = if density.integral_to_tip(0.0) < LIGHT_SPINE {
+            LEAST_SECTION_INERTIA
+        } else {
+            0.0
+        };
         let ends = rod.panel_ends();
         let point_mass = |s: f64| -> f64 {
             let lumps = arm.lumps.iter().map(|lump| (lump.at, lump.mass_kg));
-            let at_s = lumps.chain([(1.0, arm.payload.mass_kg)]).filter(|m| (m.0 - s).abs() < 1e-12);
+            let at_s = lumps
+                .chain([(1.0, arm.payload.mass_kg)])
+                .filter(|m| (m.0 - s).abs() < 1e-12);
             at_s.map(|m| m.1 / mass_kg).sum()
         };
 
-        let counts: Vec<usize> = ends.windows(2).map(|e| nodes_in_panel(n, e[1] - e[0])).collect();
+        let counts: Vec<usize> = ends
+            .windows(2)
+            .map(|e| nodes_in_panel(n, e[1] - e[0]))
+            .collect();
         let nodes = counts.iter().sum::<usize>().next_multiple_of(LANES);
         let mut chain = Self {
             n,
@@ -119,7 +128,8 @@ impl Chain {
                 let section = half * w * (density.at(s) * gyration2).max(least);
                 for i in 0..n {
                     for j in 0..n {
-                        let (phi_i, phi_j) = (chain.phi[i * nodes + node], chain.phi[j * nodes + node]);
+                        let (phi_i, phi_j) =
+                            (chain.phi[i * nodes + node], chain.phi[j * nodes + node]);
                         chain.constant_inertia[i * n + j] += section * phi_i * phi_j;
                     }
                 }
@@ -153,6 +163,11 @@ impl Chain {
     /// Number of modes.
     pub fn modes(&self) -> usize {
         self.n
+    }
+
+    /// Bending stiffness matrix, row by row (m g L).
+    pub fn bending(&self) -> &[f64] {
+        &self.bending
     }
 
     /// Room for node vectors.
@@ -190,24 +205,42 @@ impl Chain {
     fn gather(&self, at: &mut Nodes) {
         at.yx.fill(0.0);
         at.yy.fill(0.0);
-        // G is symmetric: adding up its rows keeps the inner loop contiguous and free of a running sum.
-        for ((row, &fx), &fy) in self.reach.chunks_exact(self.nodes).zip(&at.fx).zip(&at.fy) {
-            for ((g, yx), yy) in row.iter().zip(&mut at.yx).zip(&mut at.yy) {
-                *yx += g * fx;
-                *yy += g * fy;
+        // G is symmetric: adding up its rows keeps the inner loop contiguous and free of a running sum. Four rows at a time
+        // load and store the sums a quarter as often.
+        let fours = self.reach.chunks_exact(LANES * self.nodes);
+        let (fx, fy) = (at.fx.as_chunks::<LANES>().0, at.fy.as_chunks::<LANES>().0);
+        for ((rows, fx), fy) in fours.zip(fx).zip(fy) {
+            let (first, rest) = rows.split_at(self.nodes);
+            let (second, rest) = rest.split_at(self.nodes);
+            let (third, fourth) = rest.split_at(self.nodes);
+            let sums = at.yx.iter_mut().zip(&mut at.yy);
+            for ((((a, b), c), d), (yx, yy)) in
+                first.iter().zip(second).zip(third).zip(fourth).zip(sums)
+            {
+                *yx += (a * fx[0] + b * fx[1]) + (c * fx[2] + d * fx[3]);
+                *yy += (a * fy[0] + b * fy[1]) + (c * fy[2] + d * fy[3]);
             }
         }
     }
 
     /// The force that the motion lacks, per mode: inertia + bending (with Kelvin-Voigt damping `damping`, a time) + gravity,
     /// for shape `c`, rates `v`, accelerations `a`. Zero on every mode that nothing else acts on.
-    pub fn imbalance(&self, c: &[f64], v: &[f64], a: &[f64], damping: f64, at: &mut Nodes, out: &mut [f64]) {
+    pub fn imbalance(
+        &self,
+        c: &[f64],
+        v: &[f64],
+        a: &[f64],
+        damping: f64,
+        at: &mut Nodes,
+        out: &mut [f64],
+    ) {
         let n = self.n;
         self.orient(c, at);
         self.along(v, &mut at.rate);
         self.along(a, &mut at.turn);
         for k in 0..self.nodes {
-            let (sin, cos, turn, rate2) = (at.sin[k], at.cos[k], at.turn[k], at.rate[k] * at.rate[k]);
+            let (sin, cos, turn, rate2) =
+                (at.sin[k], at.cos[k], at.turn[k], at.rate[k] * at.rate[k]);
             at.fx[k] = cos * turn - sin * rate2;
             at.fy[k] = -sin * turn - cos * rate2;
         }
@@ -217,9 +250,13 @@ impl Chain {
         }
         for (i, out) in out.iter_mut().enumerate() {
             let row = i * n..(i + 1) * n;
-            let mut sum = dot(&self.phi[i * self.nodes..(i + 1) * self.nodes], &at.fx) - self.rest_load[i];
-            for (((b, m), (c, v)), a) in
-                self.bending[row.clone()].iter().zip(&self.constant_inertia[row]).zip(c.iter().zip(v)).zip(a)
+            let mut sum =
+                dot(&self.phi[i * self.nodes..(i + 1) * self.nodes], &at.fx) - self.rest_load[i];
+            for (((b, m), (c, v)), a) in self.bending[row.clone()]
+                .iter()
+                .zip(&self.constant_inertia[row])
+                .zip(c.iter().zip(v))
+                .zip(a)
             {
                 sum += b * (c + damping * v) + m * a;
             }
@@ -233,14 +270,14 @@ impl Chain {
         self.orient(c, at);
         for j in 0..n {
             let phi_j = &self.phi[j * nodes..(j + 1) * nodes];
-            for k in 0..nodes {
-                at.fx[k] = at.cos[k] * phi_j[k];
-                at.fy[k] = -at.sin[k] * phi_j[k];
+            for (k, phi) in phi_j.iter().enumerate() {
+                at.fx[k] = at.cos[k] * phi;
+                at.fy[k] = -at.sin[k] * phi;
             }
             self.gather(at);
-            for k in 0..nodes {
+            for (k, phi) in phi_j.iter().enumerate() {
                 at.fx[k] = at.cos[k] * at.yx[k] - at.sin[k] * at.yy[k];
-                at.fy[k] = self.gravity[k] * at.cos[k] * phi_j[k];
+                at.fy[k] = self.gravity[k] * at.cos[k] * phi;
             }
             for i in 0..=j {
                 let phi_i = &self.phi[i * nodes..(i + 1) * nodes];
@@ -270,7 +307,9 @@ impl Chain {
             at.fy[k] = -at.sin[k] * at.rate[k];
         }
         self.gather(&mut at);
-        let constant: f64 = (0..self.n).map(|i| v[i] * dot_short(&self.constant_inertia[i * self.n..], v)).sum();
+        let constant: f64 = (0..self.n)
+            .map(|i| v[i] * dot_short(&self.constant_inertia[i * self.n..], v))
+            .sum();
         0.5 * (dot(&at.fx, &at.yx) + dot(&at.fy, &at.yy) + constant)
     }
 
@@ -280,9 +319,9 @@ impl Chain {
         self.orient(c, &mut at);
         let each = self.phi.chunks_exact(self.nodes).map(|phi| {
             let mut reach = [0.0; 2];
-            for k in 0..self.nodes {
-                reach[0] += self.weight[k] * at.cos[k] * phi[k];
-                reach[1] -= self.weight[k] * at.sin[k] * phi[k];
+            for (k, phi) in phi.iter().enumerate() {
+                reach[0] += self.weight[k] * at.cos[k] * phi;
+                reach[1] -= self.weight[k] * at.sin[k] * phi;
             }
             reach
         });
@@ -290,8 +329,8 @@ impl Chain {
     }
 }
 
-/// Gauss nodes in a panel of this length. The shape's sine and cosine must be integrated as well as the shape can bend:
-/// with these, mass matrix and gravity of shapes that turn by two radians a mode are right to 1e-7.
+/// Gauss nodes in a panel of this length: as many as sine and cosine of the most bent shapes need. Measured on the examples
+/// with 6 to 12 modes of up to 2 rad: kinetic energies are right to 1e-9, the tip's effective mass to 1e-7.
 fn nodes_in_panel(n: usize, length: f64) -> usize {
     4 + ((n + 8) as f64 * length).ceil() as usize
 }
@@ -303,7 +342,9 @@ fn integral_weights(rule: &[(f64, f64)], x: f64) -> Vec<f64> {
     let weight = |&(node, w): &(f64, f64)| {
         // The polynomial that is 1 at this node in Legendre polynomials, each integrated by its recurrence.
         let at_node = legendre(count, node);
-        let higher: f64 = (1..count).map(|j| at_node[j] * (to_x[j + 1] - to_x[j - 1])).sum();
+        let higher: f64 = (1..count)
+            .map(|j| at_node[j] * (to_x[j + 1] - to_x[j - 1]))
+            .sum();
         0.5 * w * (x + 1.0 + higher)
     };
     rule.iter().map(weight).collect()

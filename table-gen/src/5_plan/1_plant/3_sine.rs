@@ -7,7 +7,7 @@ use std::f64::consts::FRAC_2_PI;
 
 /// pi/2 in two parts; the first has 33 bits, so that its product with a small whole number is exact (Cody and Waite,
 /// Software Manual for the Elementary Functions, 1980, ch. 8).
-const HALF_PI: [f64; 2] = [1.570_796_326_734_125_614_17, 6.077_100_506_506_192_249_32e-11];
+const HALF_PI: [f64; 2] = [1.570_796_326_734_125_6, 6.077_100_506_506_192e-11];
 /// Adding and taking away this rounds to a whole number and leaves that number in the lowest bits.
 const ROUND: f64 = 6_755_399_441_055_744.0;
 
@@ -22,9 +22,17 @@ pub(super) fn sin_cos(x: f64) -> (f64, f64) {
     // Taylor series: on |r| <= pi/4 the first term left out is below 1e-17.
     let sin = r + r * r2 * series(r2, &SIN);
     let cos = 1.0 + r2 * series(r2, &COS);
-    let (s, c) = if quarter & 1 == 0 { (sin, cos) } else { (cos, sin) };
+    let (s, c) = if quarter & 1 == 0 {
+        (sin, cos)
+    } else {
+        (cos, sin)
+    };
     let s = if quarter & 2 == 0 { s } else { -s };
-    let c = if quarter.wrapping_add(1) & 2 == 0 { c } else { -c };
+    let c = if quarter.wrapping_add(1) & 2 == 0 {
+        c
+    } else {
+        -c
+    };
     (s, c)
 }
 
@@ -65,7 +73,10 @@ mod tests {
         for k in -20_000..=20_000 {
             let x = f64::from(k) * 0.012_345_678_9;
             let (sin, cos) = sin_cos(x);
-            assert!((sin - x.sin()).abs() < 3e-16 && (cos - x.cos()).abs() < 3e-16, "{x}: {sin} {cos}");
+            assert!(
+                (sin - x.sin()).abs() < 3e-16 && (cos - x.cos()).abs() < 3e-16,
+                "{x}: {sin} {cos}"
+            );
         }
     }
 }

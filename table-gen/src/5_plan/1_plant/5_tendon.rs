@@ -40,7 +40,15 @@ struct TipEnd {
 impl Tendon {
     /// A slack tendon at tip orientation 0.
     pub fn new(options: TendonOptions, sign: f64, offset_m: f64) -> Self {
-        Self { options, sign, offset_m, wound_m: 0.0, slid_m: 0.0, target_n: 0.0, broken: false }
+        Self {
+            options,
+            sign,
+            offset_m,
+            wound_m: 0.0,
+            slid_m: 0.0,
+            target_n: 0.0,
+            broken: false,
+        }
     }
 
     /// Stiffness of either side (N/m).
@@ -57,7 +65,11 @@ impl Tendon {
         let (x, y, side) = (self.wound_m, closer_m, self.side_n_m());
         if self.broken || x <= y {
             let slid_m = self.slid_m.clamp(x.min(y), x.max(y));
-            return TipEnd { tension_n: 0.0, stiffness_n_m: 0.0, slid_m };
+            return TipEnd {
+                tension_n: 0.0,
+                stiffness_n_m: 0.0,
+                slid_m,
+            };
         }
         let ratio = 1.0 / (1.0 - self.options.friction_fraction);
         let least = (x + ratio * y) / (1.0 + ratio);
@@ -70,19 +82,30 @@ impl Tendon {
         } else {
             0.0
         };
-        TipEnd { tension_n: side * (slid_m - y), stiffness_n_m: side * (1.0 - given_way), slid_m }
+        TipEnd {
+            tension_n: side * (slid_m - y),
+            stiffness_n_m: side * (1.0 - given_way),
+            slid_m,
+        }
     }
 
     /// Couple on the tip (N m) and its slope over the tip orientation (N m/rad).
     pub fn couple(&self, tip_rad: f64) -> (f64, f64) {
         let end = self.tip_end(self.closer_m(tip_rad));
-        (self.sign * self.offset_m * end.tension_n, -self.offset_m * self.offset_m * end.stiffness_n_m)
+        (
+            self.sign * self.offset_m * end.tension_n,
+            -self.offset_m * self.offset_m * end.stiffness_n_m,
+        )
     }
 
     /// Tensions at the tip and at the spool (N), both >= 0.
     pub fn tensions_n(&self, tip_rad: f64) -> [f64; 2] {
         let end = self.tip_end(self.closer_m(tip_rad));
-        let spool_n = if end.tension_n > 0.0 { self.side_n_m() * (self.wound_m - end.slid_m) } else { 0.0 };
+        let spool_n = if end.tension_n > 0.0 {
+            self.side_n_m() * (self.wound_m - end.slid_m)
+        } else {
+            0.0
+        };
         [end.tension_n, spool_n]
     }
 
@@ -104,7 +127,8 @@ impl Tendon {
         let [_, spool_n] = self.tensions_n(tip_rad);
         let lacking_m = (self.target_n - spool_n) / self.options.stiffness_n_m;
         let reach_m = self.options.winding_speed_limit_m_s * dt_s;
-        self.wound_m += (-lacking_m * (-dt_s / self.options.lag_s).exp_m1()).clamp(-reach_m, reach_m);
+        self.wound_m +=
+            (-lacking_m * (-dt_s / self.options.lag_s).exp_m1()).clamp(-reach_m, reach_m);
         self.settle(tip_rad);
     }
 

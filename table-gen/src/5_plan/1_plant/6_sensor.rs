@@ -18,7 +18,12 @@ pub(super) struct Sensor {
 
 impl Sensor {
     pub fn new(options: SensorOptions) -> Self {
-        Self { options, fault: SensorFault::None, under_way: VecDeque::new(), last: None }
+        Self {
+            options,
+            fault: SensorFault::None,
+            under_way: VecDeque::new(),
+            last: None,
+        }
     }
 
     pub fn set_fault(&mut self, fault: SensorFault) {

@@ -41,15 +41,22 @@ pub(super) fn modes(
     let lower = cholesky.l();
     // L^-1 K L^-T, whose eigenvectors are L^T times the modes.
     let reduce = |m: DMatrix<f64>| {
-        let half = lower.solve_lower_triangular(&m).expect("a Cholesky factor has no zero pivot");
-        lower.solve_lower_triangular(&half.transpose()).expect("a Cholesky factor has no zero pivot")
+        let half = lower
+            .solve_lower_triangular(&m)
+            .expect("a Cholesky factor has no zero pivot");
+        lower
+            .solve_lower_triangular(&half.transpose())
+            .expect("a Cholesky factor has no zero pivot")
     };
     let reduced_bending = reduce(part(bending));
     let eigen = SymmetricEigen::new(reduce(part(stiffness)));
     let mut modes: Vec<_> = (0..free)
         .map(|k| {
             let shape = eigen.eigenvectors.column(k);
-            (eigen.eigenvalues[k], 0.5 * damping * shape.dot(&(&reduced_bending * shape)))
+            (
+                eigen.eigenvalues[k],
+                0.5 * damping * shape.dot(&(&reduced_bending * shape)),
+            )
         })
         .collect();
     modes.sort_by(|a, b| a.0.total_cmp(&b.0));
@@ -58,7 +65,14 @@ pub(super) fn modes(
 
 /// Time constant of Kelvin-Voigt damping that gives the first held-tip mode this damping ratio about the unloaded shape
 /// without gravity. With damping forces proportional to bending forces, `ratio = damping omega / 2`.
-pub(super) fn damping_time(chain: &Chain, bending: &DMatrix<f64>, unloaded: &[f64], ratio: f64) -> f64 {
+pub(super) fn damping_time(
+    chain: &Chain,
+    bending: &DMatrix<f64>,
+    unloaded: &[f64],
+    ratio: f64,
+) -> f64 {
     let modes = modes(&chain.mass_matrix(unloaded), bending, bending, 0.0, 1);
-    modes.first().map_or(0.0, |first| 2.0 * ratio / first.0.sqrt())
+    modes
+        .first()
+        .map_or(0.0, |first| 2.0 * ratio / first.0.sqrt())
 }
