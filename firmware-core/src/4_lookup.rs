@@ -1,4 +1,4 @@
-//! The rest state of a branch at a setpoint.
+//! The rest state of a branch at a setpoint, with one payload.
 //!
 //! The setpoint goes through the branch's parameter map; between the two knots around the parameter each quantity is
 //! the cubic Hermite polynomial of its values and slopes. With `h` the distance of the knots and `s` in 0..1 the
@@ -66,12 +66,10 @@ impl RestState {
 pub enum LookupError {
     /// The setpoint is NaN or infinite.
     NotFinite,
-    /// The slice has no branch of this number.
+    /// There is no branch of this number with this payload.
     NoSuchBranch {
         /// The number asked for.
         branch: u8,
-        /// Number of branches; they count from 0.
-        branches: u8,
     },
     /// The branch does not reach the setpoint.
     OutsideBranch {
@@ -93,10 +91,8 @@ impl<'a> Slice<'a> {
         if !setpoint.is_finite() {
             return Err(LookupError::NotFinite);
         }
-        let found = self.branch(branch).ok_or(LookupError::NoSuchBranch {
-            branch,
-            branches: self.branch_count(),
-        })?;
+        let missing = LookupError::NoSuchBranch { branch };
+        let found = self.branch(branch).ok_or(missing)?;
         let outside = LookupError::OutsideBranch {
             setpoint,
             from: found.entry.from,
@@ -243,12 +239,10 @@ impl fmt::Display for LookupError {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match *self {
             Self::NotFinite => f.say(&[T("the setpoint is not a finite number; check the sensor")]),
-            Self::NoSuchBranch { branch, branches } => f.say(&[
+            Self::NoSuchBranch { branch } => f.say(&[
                 T("there is no branch "),
                 N(branch.into()),
-                T("; the table has "),
-                N(branches.into()),
-                T(" of them, counted from 0"),
+                T(" with this payload; find the branch from the measured pose"),
             ]),
             Self::OutsideBranch { setpoint, from, to } => f.say(&[
                 T("the branch does not reach setpoint "),

@@ -20,7 +20,9 @@
 //! ([`Drive::HeldTip`]), the couple when the tensions are ([`Drive::AppliedCouple`]). The other of the two is its
 //! *conjugate* and follows from the table. A *branch* is one family of rest states followed over the setpoint; its
 //! Morse index is the number of directions in which the energy falls: 0 is stable (a *well*), 1 is a *pass* between
-//! wells. A *stretch* is a run of setpoints of a stable branch that may be commanded.
+//! wells. A *stretch* is a run of setpoints of a stable branch that may be commanded; its *reserves* say how far it is,
+//! in the worst case, from what makes a setpoint unusable. A *slice* is the arm with one payload. A branch keeps its
+//! number from slice to slice. A *load* is the slices to be respected with what the tip carries.
 //!
 //! # Contract
 //!
@@ -34,30 +36,34 @@
 //! 1. `1_bytes.rs`, `1_words.rs`: numbers out of bytes, numbers into messages;
 //! 2. `2_format/`: what a table file holds (and, with the feature `write`, its writer);
 //! 3. `3_table/`: **start here**: [`Table::new`] checks the bytes, once, and is the only way to a [`Table`];
-//! 4. `4_lookup.rs`: the rest state of a branch at a setpoint;
-//! 5. `5_pose.rs`: the branch a measured pose belongs to;
-//! 6. `6_choice/`: [`choose`], the answer to a requested setpoint.
+//! 4. `4_lookup.rs`: the rest state of a branch at a setpoint, with one payload;
+//! 5. `5_load.rs`: [`Table::load`], the slices to be respected with a payload, known or not;
+//! 6. `6_pose.rs`: the branch a measured pose belongs to;
+//! 7. `7_choice/`: [`choose`], the answer to a requested setpoint.
 
 #[path = "1_bytes.rs"]
 mod bytes;
-#[path = "6_choice/mod.rs"]
+#[path = "7_choice/mod.rs"]
 pub mod choice;
 #[path = "2_format/mod.rs"]
 pub mod format;
+#[path = "5_load.rs"]
+pub mod load;
 #[path = "4_lookup.rs"]
 pub mod lookup;
-#[path = "5_pose.rs"]
+#[path = "6_pose.rs"]
 pub mod pose;
 #[path = "3_table/mod.rs"]
 pub mod table;
 #[path = "1_words.rs"]
 mod words;
 
-pub use choice::{Answer, Config, ConfigError, Input, Present, Refusal, TensionPair, choose};
+pub use choice::{Answer, Input, Present, Refusal, TensionPair, choose};
 pub use format::{
-    BranchEntry, Deducted, Drive, Header, Limit, ParameterMap, Requirement, SliceEntry, Stretch,
-    Units, WorstError,
+    BranchEntry, Deducted, Drive, Header, Limit, ParameterMap, Requirement, Reserves, SliceEntry,
+    Stretch, UNBOUNDED, Units, WorstError,
 };
+pub use load::{Load, LoadError, Payload};
 pub use lookup::{LookupError, RestState, Well};
 pub use pose::{Pose, PoseError, Seat, which_branch};
-pub use table::{Branch, Limits, Slice, Table, TableError};
+pub use table::{Branch, Limits, Slice, Table, TableError, Usable};

@@ -83,3 +83,7 @@ pub const BESIDE_A_FOLD: f64 = 1e-3;
 /// Values printed with four decimals: half a unit of the last, and what an accuracy of .03 degrees
 /// adds.
 pub const PRINTED_FOUR_DECIMALS: f64 = 0.5e-4 + 1.3e-4;
+
+/// Two-coordinate values with three decimals: half a unit of the last; the model itself is solved to
+/// rounding.
+pub const PRINTED_THREE_DECIMALS: f64 = 0.5e-3;

@@ -3,7 +3,7 @@
 
 use host_tests::program::table_gen;
 use host_tests::reference::{list, number, parse, rows};
-use host_tests::tolerances::{PRINTED_FOUR_DECIMALS, REST_STATE};
+use host_tests::tolerances::{PRINTED_FOUR_DECIMALS, PRINTED_THREE_DECIMALS, REST_STATE};
 use serde_json::Value;
 use std::f64::consts::PI;
 use std::process::Command;
@@ -253,14 +253,14 @@ fn stable(found: &Value) -> (Vec<(f64, bool)>, Vec<f64>) {
     (model, rod)
 }
 
-/// Values of three to four decimals: of the two-coordinate model with whether the rod has them too,
-/// and of the rod.
+/// Mean angles, computed: of the two-coordinate model to three decimals with whether the rod has them
+/// too, and of the rod to four.
 #[track_caller]
 fn verdicts(gamma: f64, tip_fraction: f64, tip_angle: f64, model: &[(f64, bool)], rod: &[f64]) {
     let (found_model, found_rod) = stable(&held_at(gamma, tip_fraction, tip_angle));
     assert_eq!(found_model.len(), model.len(), "{found_model:?}");
     for (found, expected) in found_model.iter().zip(model) {
-        assert_near(found.0, expected.0, PRINTED_FOUR_DECIMALS);
+        assert_near(found.0, expected.0, PRINTED_THREE_DECIMALS);
         assert_eq!(found.1, expected.1, "confirmed, at mean angle {}", found.0);
     }
     assert_eq!(found_rod.len(), rod.len(), "{found_rod:?}");
@@ -275,7 +275,7 @@ fn both_wells_of_the_upright_arm_are_confirmed() {
         0.05,
         1.0,
         0.0,
-        &[(-1.4636, true), (1.4636, true)],
+        &[(-1.464, true), (1.464, true)],
         &[-1.4602, 1.4602],
     );
 }
@@ -286,20 +286,14 @@ fn well_beside_a_near_fold_is_confirmed() {
         0.05,
         1.0,
         1.0,
-        &[(-0.8646, true), (1.8010, true)],
+        &[(-0.865, true), (1.801, true)],
         &[-0.7135, 1.8090],
     );
 }
 
 #[test]
 fn well_beyond_the_rods_fold_is_false() {
-    verdicts(
-        0.02,
-        1.0,
-        PI,
-        &[(-1.0241, false), (2.5391, true)],
-        &[2.6244],
-    );
+    verdicts(0.02, 1.0, PI, &[(-1.024, false), (2.539, true)], &[2.6244]);
 }
 
 #[test]
@@ -308,7 +302,7 @@ fn curled_wells_of_a_very_soft_arm_are_false() {
         0.01,
         1.0,
         2.0 * PI,
-        &[(-0.5236, false), (PI, true), (6.8068, false)],
+        &[(-0.524, false), (PI, true), (6.807, false)],
         &[PI],
     );
 }

@@ -77,7 +77,7 @@ impl From<TabulationError> for BuildError {
 /// [`BuildError::ArmFile`] or [`BuildError::Tabulation`], whose messages say what to change.
 pub fn table_bytes(arm_file: &Path) -> Result<Vec<u8>, BuildError> {
     let arm = arm_file::read(arm_file)?;
-    Ok(tabulate(&arm, &mut |_| {})?.bytes)
+    Ok(tabulate(&arm, &|_| {})?.bytes)
 }
 
 /// Everything that is written for an arm.
@@ -98,8 +98,8 @@ impl Outputs {
     ///
     /// # Errors
     /// [`BuildError::Tabulation`].
-    pub fn make(arm: &Arm, progress: &mut dyn FnMut(f64)) -> Result<Self, BuildError> {
-        let tabulation = tabulate(arm, &mut |done| progress(0.5 * done))?;
+    pub fn make(arm: &Arm, progress: &(dyn Fn(f64) + Sync)) -> Result<Self, BuildError> {
+        let tabulation = tabulate(arm, &|done| progress(0.7 * done))?;
         let table = Table::new(&tabulation.bytes).map_err(TabulationError::Refused)?;
         let readable = Readable::new(&table).map_err(TabulationError::Refused)?;
         let table_json =

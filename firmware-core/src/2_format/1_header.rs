@@ -36,7 +36,7 @@ pub struct WorstError {
     pub restoring_n_m_per_rad: f32,
 }
 
-/// What the generator took off the safe stretches because of the interpolation errors. All >= 0.
+/// What the generator took off the usable stretches because of the interpolation errors. All >= 0.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Deducted {
     /// From the ends of the stretches, in units of the setpoint (rad or N m).
@@ -62,8 +62,10 @@ pub struct Header<'a> {
     pub gamma: f32,
     /// Length of the arm (m), > 0.
     pub length_m: f32,
-    /// Total mass, payload included (kg), > 0.
+    /// Total mass, the nominal payload included (kg), > 0.
     pub mass_kg: f32,
+    /// Payload that the tensions are made for when the payload is unknown (kg): that of one of the slices.
+    pub nominal_payload_kg: f32,
     /// Energy scale m g L (J), > 0.
     pub energy_scale_j: f32,
     /// Base tilt from the upward vertical (rad), within -pi..=pi.

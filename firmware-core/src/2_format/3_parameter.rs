@@ -43,35 +43,4 @@ impl ParameterMap {
             (true, true) => root(u) - root(v),
         }
     }
-
-    /// The f64 twin of [`Self::t`], for the generator. It starts from the same anchors, as stored.
-    #[cfg(feature = "write")]
-    pub fn t_f64(&self, setpoint: f64) -> f64 {
-        let (from, to) = (f64::from(self.anchor_from), f64::from(self.anchor_to));
-        let root = |x: f64| libm::sqrt(x.max(0.0));
-        let (u, v) = (
-            (setpoint - from) / (to - from),
-            (to - setpoint) / (to - from),
-        );
-        match (self.fold_from, self.fold_to) {
-            (false, false) => u,
-            (true, false) => root(u),
-            (false, true) => -root(v),
-            (true, true) => root(u) - root(v),
-        }
-    }
-
-    /// The setpoint whose parameter is `t`: the inverse of [`Self::t_f64`], for the generator.
-    #[cfg(feature = "write")]
-    pub fn setpoint_f64(&self, t: f64) -> f64 {
-        let (from, to) = (f64::from(self.anchor_from), f64::from(self.anchor_to));
-        let u = match (self.fold_from, self.fold_to) {
-            (false, false) => t,
-            (true, false) => t * t,
-            (false, true) => 1.0 - t * t,
-            // With u = sin^2 x the parameter is sin x - cos x.
-            (true, true) => 0.5 * (1.0 + t * libm::sqrt((2.0 - t * t).max(0.0))),
-        };
-        from + u * (to - from)
-    }
 }

@@ -5,13 +5,17 @@
 //!                    directory length u16, knots length u32, reserved u32 = 0
 //! header             postcard, [`Header`]
 //! directory          postcard, for each slice a [`SliceEntry`], its [`BranchEntry`]s, its [`Stretch`]es
-//! knots              f32, branches in directory order; a knot is t, then (value, d/dt) of each quantity:
+//! knots              f32, for each slice its branches' knots, then its stretches' reserves, both in directory order.
+//!                    A knot is t, then (value, d/dt) of each quantity:
 //!                    stable branch    mean angle, conjugate, energy, tip x, tip y, restoring stiffness   13 f32
 //!                    unstable branch  mean angle, conjugate, energy                                       7 f32
+//!                    Reserves are 9 f32 at each point of a stretch, see [`Reserves`].
 //! checksum           CRC-32 (ISO-HDLC) of everything before it
 //! ```
 //!
 //! Between knots every quantity is a cubic Hermite polynomial in `t`; [`ParameterMap`] takes a setpoint to `t`.
+//! Between the points of a stretch reserves are linear in the setpoint. They are worst cases over the tolerances, and
+//! the generator has taken off what the straight lines could overstate.
 
 #[path = "2_directory.rs"]
 mod directory;
@@ -19,20 +23,24 @@ mod directory;
 mod header;
 #[path = "3_parameter.rs"]
 mod parameter;
+#[path = "4_reserves.rs"]
+mod reserves;
 #[cfg(feature = "write")]
-#[path = "4_write.rs"]
+#[path = "5_write.rs"]
 pub mod write;
 
-pub use directory::{BranchEntry, Limit, Requirement, SliceEntry, Stretch};
+pub use directory::{BranchEntry, Limit, MOST_BRANCHES, Requirement, SliceEntry, Stretch};
 pub use header::{Deducted, Drive, Header, Units, WorstError};
 pub use parameter::ParameterMap;
+pub(crate) use reserves::smaller;
+pub use reserves::{RESERVES, Reserves, UNBOUNDED};
 
 use serde::Deserialize;
 
 /// The first four bytes of every table.
 pub const MAGIC: [u8; 4] = *b"WTHY";
 /// The version of the format that this crate reads and writes. It rises with every change of meaning.
-pub const VERSION: u16 = 1;
+pub const VERSION: u16 = 2;
 /// Length of the prefix in bytes.
 pub const PREFIX_LEN: usize = 24;
 /// Length of the checksum at the end in bytes.

@@ -98,6 +98,13 @@ pub enum Fault {
         /// The payload of the slice before (kg).
         previous: Option<f32>,
     },
+    /// No slice has the nominal payload.
+    NominalPayload {
+        /// The nominal payload (kg).
+        nominal_kg: f32,
+        /// The nearest payload of a slice (kg).
+        nearest_kg: f32,
+    },
     /// A slice without branches.
     NoBranches {
         /// The slice.
@@ -107,7 +114,7 @@ pub enum Fault {
     Branch {
         /// The slice.
         slice: u16,
-        /// The branch.
+        /// The branch, counted in the slice: its number may be what is wrong.
         branch: u8,
         /// In what way.
         fault: BranchFault,
@@ -121,7 +128,7 @@ pub enum Fault {
         /// In what way.
         fault: StretchFault,
     },
-    /// Knots are left after the last branch.
+    /// Values are left after the last reserves.
     KnotsLeftOver {
         /// How many bytes.
         bytes: u32,
@@ -131,6 +138,20 @@ pub enum Fault {
 /// What is wrong with a branch.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub enum BranchFault {
+    /// The number is too large, or not above that of the branch before.
+    Number {
+        /// The number.
+        number: u8,
+        /// The number of the branch before.
+        previous: Option<u8>,
+    },
+    /// The branch of this number is stable in one slice and unstable in another: it cannot be the same.
+    Stability {
+        /// The number.
+        number: u8,
+        /// Its Morse index here.
+        index: u8,
+    },
     /// An end or an anchor is not finite, or larger than 1e9.
     NotFinite,
     /// The cover is empty or reversed.
@@ -167,9 +188,9 @@ pub enum BranchFault {
         /// The exits, one bit each.
         exits: u32,
     },
-    /// An exit is not a branch of index 1.
+    /// An exit is not a branch of index 1 in this slice.
     Exit {
-        /// The number of the branch it refers to.
+        /// The number it refers to.
         exit: u8,
     },
     /// Fewer than two knots.
@@ -216,14 +237,14 @@ pub enum BranchFault {
 /// What is wrong with a stretch.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub enum StretchFault {
-    /// There is no such branch.
+    /// The slice has no such branch.
     NoSuchBranch {
-        /// The branch.
+        /// Its number.
         branch: u8,
     },
     /// The branch is unstable.
     UnstableBranch {
-        /// The branch.
+        /// Its number.
         branch: u8,
         /// Its Morse index.
         index: u8,
@@ -261,6 +282,25 @@ pub enum StretchFault {
         previous_to: f32,
         /// Lower end of this one.
         from: f32,
+    },
+    /// Fewer than two points of reserves.
+    TooFewPoints {
+        /// How many.
+        points: u8,
+    },
+    /// The values end before the reserves of this stretch do.
+    ReservesMissing {
+        /// Bytes that the stretch takes.
+        expected: u32,
+        /// Bytes that are left.
+        found: u32,
+    },
+    /// A reserve is not finite or larger than 1e9, or a strain is negative.
+    Reserve {
+        /// The point.
+        point: u8,
+        /// The place in the point.
+        place: u8,
     },
 }
 

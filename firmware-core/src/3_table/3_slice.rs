@@ -1,10 +1,10 @@
-//! Walking the directory. Records are decoded when they are asked for; the checks of [`super::Table::new`] make every
+//! Walking the directory and the values beside it. Records are decoded when they are asked for; the checks of [`super::Table::new`] make every
 //! decode succeed, and if the memory under a table should change all the same, the walks end early.
 
 use crate::bytes::float;
-use crate::format::{BranchEntry, SliceEntry, Stretch, take};
+use crate::format::{BranchEntry, Reserves, SliceEntry, Stretch, take};
 
-use super::Limits;
+use super::{Limits, Usable};
 
 /// The arm with one payload: its branches and stretches.
 #[derive(Clone, Copy, Debug)]
@@ -17,6 +17,7 @@ pub struct Slice<'a> {
     branches: &'a [u8],
     stretches: &'a [u8],
     knots: &'a [u8],
+    reserves: &'a [u8],
 }
 
 impl<'a> Slice<'a> {
@@ -25,16 +26,20 @@ impl<'a> Slice<'a> {
         self.limits
     }
 
-    /// Number of branches.
+    /// How many branches there are. Their numbers need not be consecutive.
     pub const fn branch_count(&self) -> u8 {
         self.branch_count
     }
 
-    /// The branches, in the order of their numbers.
+    /// How many stretches there are, of all branches.
+    pub const fn stretch_count(&self) -> u8 {
+        self.stretch_count
+    }
+
+    /// The branches, numbers increasing.
     pub const fn branches(&self) -> Branches<'a> {
         Branches {
             left: self.branch_count,
-            number: 0,
             directory: self.branches,
             knots: self.knots,
         }
@@ -51,14 +56,26 @@ impl<'a> Slice<'a> {
             branch,
             left: self.stretch_count,
             directory: self.stretches,
+            reserves: self.reserves,
         }
+    }
+
+    /// The stretch of `branch` that contains `setpoint`; none when it is not finite.
+    pub fn stretch_at(&self, branch: u8, setpoint: f32) -> Option<Usable<'a>> {
+        self.stretches(branch)
+            .find(|usable| usable.contains(setpoint))
+    }
+
+    /// Worst-case reserves with this payload; `None` when `setpoint` is in no stretch of `branch`.
+    pub fn reserves(&self, branch: u8, setpoint: f32) -> Option<Reserves> {
+        self.stretch_at(branch, setpoint)?.reserves(setpoint)
     }
 }
 
 /// One branch of a slice.
 #[derive(Clone, Copy, Debug)]
 pub struct Branch<'a> {
-    /// Its number in the slice.
+    /// Its number, the same with every payload.
     pub number: u8,
     /// Its entry in the directory.
     pub entry: BranchEntry,
@@ -91,15 +108,15 @@ impl<'a> Branch<'a> {
 pub struct Slices<'a> {
     limits: Limits,
     directory: &'a [u8],
-    knots: &'a [u8],
+    values: &'a [u8],
 }
 
 impl<'a> Slices<'a> {
-    pub(super) const fn new(limits: Limits, directory: &'a [u8], knots: &'a [u8]) -> Self {
+    pub(super) const fn new(limits: Limits, directory: &'a [u8], values: &'a [u8]) -> Self {
         Self {
             limits,
             directory,
-            knots,
+            values,
         }
     }
 }
@@ -111,9 +128,8 @@ impl<'a> Iterator for Slices<'a> {
         let (entry, directory) = take::<SliceEntry>(self.directory)?;
         let mut walk = Branches {
             left: entry.branches,
-            number: 0,
             directory,
-            knots: self.knots,
+            knots: self.values,
         };
         for _ in walk.by_ref() {}
         let slice = Slice {
@@ -123,22 +139,28 @@ impl<'a> Iterator for Slices<'a> {
             stretch_count: entry.stretches,
             branches: directory,
             stretches: walk.directory,
-            knots: self.knots,
+            knots: self.values,
+            reserves: walk.knots,
         };
-        self.directory = walk.directory;
-        self.knots = walk.knots;
+        (self.directory, self.values) = (walk.directory, walk.knots);
         for _ in 0..entry.stretches {
-            self.directory = take::<Stretch>(self.directory)?.1;
+            (_, self.directory, self.values) = stretch(self.directory, self.values)?;
         }
         Some(slice)
     }
+}
+
+/// The stretch at the front of a directory, with its reserves at the front of `values`, and what follows both.
+fn stretch<'a>(directory: &'a [u8], values: &'a [u8]) -> Option<(Usable<'a>, &'a [u8], &'a [u8])> {
+    let (entry, directory) = take::<Stretch>(directory)?;
+    let (reserves, values) = values.split_at_checked(entry.reserve_values().checked_mul(4)?)?;
+    Some((Usable::new(entry, reserves), directory, values))
 }
 
 /// The branches of a slice.
 #[derive(Clone, Debug)]
 pub struct Branches<'a> {
     left: u8,
-    number: u8,
     directory: &'a [u8],
     knots: &'a [u8],
 }
@@ -151,12 +173,10 @@ impl<'a> Iterator for Branches<'a> {
         let (entry, directory) = take::<BranchEntry>(self.directory)?;
         let values = usize::from(entry.knots).checked_mul(entry.floats_per_knot())?;
         let (knots, rest) = self.knots.split_at_checked(values.checked_mul(4)?)?;
-        let number = self.number;
-        self.number = number.saturating_add(1);
         self.directory = directory;
         self.knots = rest;
         Some(Branch {
-            number,
+            number: entry.number,
             entry,
             knots,
         })
@@ -169,18 +189,19 @@ pub struct Stretches<'a> {
     branch: u8,
     left: u8,
     directory: &'a [u8],
+    reserves: &'a [u8],
 }
 
-impl Iterator for Stretches<'_> {
-    type Item = Stretch;
+impl<'a> Iterator for Stretches<'a> {
+    type Item = Usable<'a>;
 
-    fn next(&mut self) -> Option<Stretch> {
+    fn next(&mut self) -> Option<Usable<'a>> {
         loop {
             self.left = self.left.checked_sub(1)?;
-            let (stretch, directory) = take::<Stretch>(self.directory)?;
-            self.directory = directory;
-            if stretch.branch == self.branch {
-                return Some(stretch);
+            let (usable, directory, reserves) = stretch(self.directory, self.reserves)?;
+            (self.directory, self.reserves) = (directory, reserves);
+            if usable.entry.branch == self.branch {
+                return Some(usable);
             }
         }
     }

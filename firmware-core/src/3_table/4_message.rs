@@ -3,6 +3,7 @@
 use core::fmt;
 
 use super::error::{BranchFault, Fault, Section, StretchFault, TableError};
+use crate::format::MOST_BRANCHES;
 use crate::words::Word::{F, N, T, X};
 use crate::words::Words;
 
@@ -106,6 +107,16 @@ impl fmt::Display for Fault {
                 F(previous.unwrap_or(0.0)),
                 T(" kg"),
             ]),
+            Self::NominalPayload {
+                nominal_kg,
+                nearest_kg,
+            } => f.say(&[
+                T("no slice has the nominal payload "),
+                F(nominal_kg),
+                T(" kg, the nearest has "),
+                F(nearest_kg),
+                T(" kg"),
+            ]),
             Self::NoBranches { slice } => {
                 f.say(&[T("slice "), N(slice.into()), T(" has no branches")])
             }
@@ -138,7 +149,7 @@ impl fmt::Display for Fault {
                 fmt::Display::fmt(&fault, f)
             }
             Self::KnotsLeftOver { bytes } => {
-                f.say(&[N(bytes), T(" bytes are left after the knots")])
+                f.say(&[N(bytes), T(" bytes are left after the reserves")])
             }
         }
     }
@@ -147,6 +158,28 @@ impl fmt::Display for Fault {
 impl fmt::Display for BranchFault {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match *self {
+            Self::Number { number, previous } => {
+                f.say(&[T("its number "), N(number.into())])?;
+                match previous {
+                    Some(previous) => f.say(&[
+                        T(" is not above "),
+                        N(previous.into()),
+                        T(", that of the branch before, or not below "),
+                    ])?,
+                    None => f.say(&[T(" is not below ")])?,
+                }
+                f.say(&[N(MOST_BRANCHES.into())])
+            }
+            Self::Stability { number, index } => f.say(&[
+                T("number "),
+                N(number.into()),
+                T(" has index "),
+                N(index.into()),
+                T(match index {
+                    0 => " and is unstable in a slice before",
+                    _ => " and is stable in a slice before",
+                }),
+            ]),
             Self::NotFinite => f.say(&[T("an end or anchor is not finite or above 1e9")]),
             Self::EmptyCover { from, to } => {
                 f.say(&[T("it covers nothing: "), F(from), T(" to "), F(to)])
@@ -182,7 +215,7 @@ impl fmt::Display for BranchFault {
             Self::Exit { exit } => f.say(&[
                 T("its exit "),
                 N(exit.into()),
-                T(" is not a branch of index 1"),
+                T(" is not a branch of index 1 in this slice"),
             ]),
             Self::TooFewKnots { knots } => {
                 f.say(&[N(knots.into()), T(" knots; it needs at least 2")])
@@ -265,6 +298,24 @@ impl fmt::Display for StretchFault {
                 F(from),
                 T(", before the one below ends at "),
                 F(previous_to),
+            ]),
+            Self::TooFewPoints { points } => f.say(&[
+                N(points.into()),
+                T(" points of reserves; it needs at least 2"),
+            ]),
+            Self::ReservesMissing { expected, found } => f.say(&[
+                T("its reserves take "),
+                N(expected),
+                T(" bytes, "),
+                N(found),
+                T(" are left"),
+            ]),
+            Self::Reserve { point, place } => f.say(&[
+                T("value "),
+                N(place.into()),
+                T(" of its reserves at point "),
+                N(point.into()),
+                T(" is not finite, above 1e9, or a negative strain"),
             ]),
         }
     }

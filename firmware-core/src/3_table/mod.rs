@@ -1,6 +1,6 @@
 //! The checked view of a table's bytes. Nothing is copied, and any alignment will do.
 
-#[path = "2_check.rs"]
+#[path = "2_check/mod.rs"]
 mod check;
 #[path = "1_error.rs"]
 mod error;
@@ -8,9 +8,12 @@ mod error;
 mod message;
 #[path = "3_slice.rs"]
 mod slice;
+#[path = "5_usable.rs"]
+mod usable;
 
 pub use error::{BranchFault, Fault, Section, StretchFault, TableError};
 pub use slice::{Branch, Branches, Slice, Slices, Stretches};
+pub use usable::Usable;
 
 use serde::Serialize;
 
@@ -32,6 +35,8 @@ pub struct Limits {
     pub deducted_tension_n: f32,
     /// Worst interpolation error of the mean angle (rad).
     pub mean_angle_error_rad: f32,
+    /// Payload that the tensions are made for when the payload is unknown (kg).
+    pub nominal_payload_kg: f32,
     /// Lowest tabulated setpoint (rad or N m).
     pub setpoint_lo: f32,
     /// Highest tabulated setpoint.

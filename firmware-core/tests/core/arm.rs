@@ -9,12 +9,20 @@
 //!
 //! Tip held: x is the tip angle, the hold couple is the slope of the potential over it, `-K q`. Couple applied:
 //! K = 1, x is the couple, the tip angle is q, and the stored energy lacks the term with x.
+//!
+//! A heavier payload makes a held tip's K larger: the branches stay where they are, couples and energies grow.
 
-use firmware_core::format::write::{BranchContents, Contents, SliceContents, buffer_len, write};
-use firmware_core::{
-    BranchEntry, Deducted, Drive, Header, Limit, ParameterMap, Requirement, Stretch, Units,
-    WorstError,
+use std::sync::OnceLock;
+
+use firmware_core::format::write::{
+    BranchContents, Contents, SliceContents, StretchContents, buffer_len, write,
 };
+use firmware_core::{
+    BranchEntry, Deducted, Drive, Header, Limit, Load, ParameterMap, Payload, Requirement,
+    Reserves, Stretch, Table, Units, WorstError,
+};
+
+use crate::parameter::{parameter, setpoint};
 
 /// Table range.
 pub const RANGE: (f64, f64) = (-1.0, 1.0);
@@ -22,6 +30,9 @@ pub const KNOTS: u16 = 33;
 pub const OFFSET_M: f32 = 0.01;
 pub const PRETENSION_N: f32 = 3.0;
 pub const MEAN_ERROR_RAD: f32 = 2e-4;
+pub const NOMINAL_KG: f32 = 0.06;
+/// Payloads of [`draft_with_payloads`], and how much larger K is with each.
+pub const PAYLOADS: [(f32, f32); 3] = [(0.05, 0.9), (NOMINAL_KG, 1.0), (0.08, 1.2)];
 
 /// Setpoint of the upper fold; the lower one is its mirror image.
 pub fn fold() -> f64 {
@@ -81,7 +92,51 @@ pub struct Draft {
 pub struct DraftSlice {
     pub payload_kg: f32,
     pub branches: Vec<(BranchEntry, Vec<f32>)>,
-    pub stretches: Vec<Stretch>,
+    pub stretches: Vec<(Stretch, Vec<f32>)>,
+}
+
+impl DraftSlice {
+    /// Another payload, with K larger by `factor`.
+    pub fn heavier(&self, payload_kg: f32, factor: f32) -> Self {
+        let mut heavier = self.clone();
+        heavier.payload_kg = payload_kg;
+        for (entry, knots) in &mut heavier.branches {
+            for knot in knots.chunks_mut(entry.floats_per_knot()) {
+                // Conjugate and energy, and the restoring stiffness of a stable branch.
+                for at in [3, 4, 5, 6, 11, 12] {
+                    if let Some(value) = knot.get_mut(at) {
+                        *value *= factor;
+                    }
+                }
+            }
+        }
+        heavier
+    }
+
+    /// Replaces the stretches, with reserves to suit; `factor` as the K of the slice.
+    pub fn set_stretches(&mut self, stretches: Vec<Stretch>, factor: f32) {
+        let with = |stretch| (stretch, reserve_values(&stretch, factor));
+        self.stretches = stretches.into_iter().map(with).collect();
+    }
+}
+
+impl std::fmt::Debug for Draft {
+    /// What the random tests vary.
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        writeln!(f, "max_tension_n {}", self.header.max_tension_n)?;
+        for slice in &self.slices {
+            let numbers: Vec<u8> = slice
+                .branches
+                .iter()
+                .map(|(entry, _)| entry.number)
+                .collect();
+            writeln!(f, "{} kg, branches {numbers:?}", slice.payload_kg)?;
+            for (stretch, _) in &slice.stretches {
+                writeln!(f, "  {stretch:?}")?;
+            }
+        }
+        Ok(())
+    }
 }
 
 impl Draft {
@@ -90,24 +145,31 @@ impl Draft {
             .slices
             .iter()
             .map(|slice| {
-                slice
+                let contents = |(entry, knots)| BranchContents { entry, knots };
+                let entries = slice
                     .branches
                     .iter()
-                    .map(|(entry, knots)| BranchContents {
-                        entry: *entry,
-                        knots,
-                    })
-                    .collect()
+                    .map(|(entry, knots)| (*entry, &knots[..]));
+                entries.map(contents).collect()
             })
             .collect();
-        let slices: Vec<SliceContents<'_>> = self
+        let stretches: Vec<Vec<StretchContents<'_>>> = self
             .slices
             .iter()
-            .zip(&branches)
-            .map(|(slice, branches)| SliceContents {
-                payload_kg: slice.payload_kg,
-                branches,
-                stretches: &slice.stretches,
+            .map(|slice| {
+                let contents = |(entry, reserves)| StretchContents { entry, reserves };
+                let entries = slice
+                    .stretches
+                    .iter()
+                    .map(|(entry, values)| (*entry, &values[..]));
+                entries.map(contents).collect()
+            })
+            .collect();
+        let slices: Vec<SliceContents<'_>> = (0..self.slices.len())
+            .map(|number| SliceContents {
+                payload_kg: self.slices[number].payload_kg,
+                branches: &branches[number],
+                stretches: &stretches[number],
             })
             .collect();
         let contents = Contents {
@@ -128,6 +190,7 @@ pub fn draft(drive: Drive, max_tension_n: f32) -> Draft {
     let entry = |branch: usize| {
         let (from, to) = [(lo, fold), (-fold, fold), (-fold, hi)][branch];
         BranchEntry {
+            number: branch as u8,
             index: u8::from(branch == 1),
             from,
             to,
@@ -150,7 +213,10 @@ pub fn draft(drive: Drive, max_tension_n: f32) -> Draft {
         tension_n: 0.01,
     };
     let stretches = [0, 2]
-        .map(|branch| stretch(drive, branch, &branches[branch].0, max_tension_n, deducted))
+        .map(|branch| {
+            let stretch = stretch(drive, branch, &branches[branch].0, max_tension_n, deducted);
+            (stretch, reserve_values(&stretch, 1.0))
+        })
         .to_vec();
     Draft {
         header: Header {
@@ -162,6 +228,7 @@ pub fn draft(drive: Drive, max_tension_n: f32) -> Draft {
             gamma: 0.05,
             length_m: 0.6,
             mass_kg: 0.1,
+            nominal_payload_kg: NOMINAL_KG,
             energy_scale_j: 0.589,
             tilt_rad: 0.0,
             offset_m: OFFSET_M,
@@ -176,7 +243,7 @@ pub fn draft(drive: Drive, max_tension_n: f32) -> Draft {
             deducted,
         },
         slices: vec![DraftSlice {
-            payload_kg: 0.06,
+            payload_kg: NOMINAL_KG,
             branches,
             stretches,
         }],
@@ -186,26 +253,103 @@ pub fn draft(drive: Drive, max_tension_n: f32) -> Draft {
 /// The same with the upper well's stretch cut in two, 0.1 to 0.3 left out.
 pub fn draft_with_gap(drive: Drive, max_tension_n: f32) -> Draft {
     let mut draft = draft(drive, max_tension_n);
-    let stretches = &mut draft.slices[0].stretches;
-    let mut above = stretches[1];
-    let edge = Limit {
-        requirement: Requirement::TensionMax,
-        value: max_tension_n,
-        limit: max_tension_n,
-    };
-    stretches[1].to = 0.1;
-    stretches[1].to_limit = edge;
-    above.from = 0.3;
-    above.from_limit = edge;
-    stretches.push(above);
+    let slice = &mut draft.slices[0];
+    let [lower, mut below] = [0, 1].map(|number| slice.stretches[number].0);
+    let mut above = below;
+    (below.to, below.to_limit) = (0.1, GAP_EDGE);
+    (above.from, above.from_limit) = (0.3, GAP_EDGE);
+    slice.set_stretches(vec![lower, below, above], 1.0);
     draft
 }
 
-/// Knots at equal steps of the parameter, slopes by differences within the branch (it ends at the folds).
+/// What ends the stretches beside the gap.
+pub const GAP_EDGE: Limit = Limit {
+    requirement: Requirement::Clearance,
+    value: 0.02,
+    limit: 0.02,
+};
+
+/// A held tip with the payloads of [`PAYLOADS`], where the stretches of each heavier one end earlier on both sides.
+pub fn draft_with_payloads(max_tension_n: f32) -> Draft {
+    let mut draft = draft(Drive::HeldTip, max_tension_n);
+    let nominal = draft.slices[0].clone();
+    draft.slices = PAYLOADS
+        .iter()
+        .map(|(payload_kg, factor)| {
+            let mut slice = nominal.heavier(*payload_kg, *factor);
+            let shorter = |(stretch, _): &(Stretch, Vec<f32>)| Stretch {
+                from: stretch.from + payload_kg,
+                to: stretch.to - payload_kg,
+                from_limit: payload_limit(*payload_kg),
+                to_limit: payload_limit(*payload_kg),
+                ..*stretch
+            };
+            slice.set_stretches(nominal.stretches.iter().map(shorter).collect(), *factor);
+            slice
+        })
+        .collect();
+    draft
+}
+
+/// The limit that ends the stretches of [`draft_with_payloads`]: it tells of which slice.
+pub fn payload_limit(payload_kg: f32) -> Limit {
+    Limit {
+        requirement: Requirement::PayloadReserve,
+        value: payload_kg,
+        limit: payload_kg,
+    }
+}
+
+/// Invented reserves, linear in the setpoint, so that interpolation is exact up to rounding.
+pub fn reserves(branch: u8, x: f32, factor: f32) -> Reserves {
+    let fold = fold() as f32;
+    let to_fold = if branch == 0 { fold - x } else { x + fold };
+    Reserves {
+        barrier_j: Some(0.1 * to_fold * factor),
+        knock_n_s: Some(0.02 * to_fold / factor),
+        payload_reserve_kg: Some(0.05 * to_fold / factor),
+        stiffness_reserve: Some(0.2 * to_fold),
+        setpoint_reserve: Some(to_fold),
+        restoring_n_m_per_rad: Some(0.1 * to_fold * factor),
+        tension_factor: Some(4.0 - x / factor),
+        clearance_m: None,
+        strain: (0.002 + 0.001 * x) * factor,
+    }
+}
+
+fn reserve_values(stretch: &Stretch, factor: f32) -> Vec<f32> {
+    let last = f32::from(stretch.points - 1);
+    (0..stretch.points)
+        .flat_map(|point| {
+            let x = stretch.from + (stretch.to - stretch.from) * f32::from(point) / last;
+            reserves(stretch.branch, x, factor).to_values()
+        })
+        .collect()
+}
+
+/// Does something with the load of a payload.
+pub fn with_load<T>(draft: &Draft, payload: Payload, then: impl FnOnce(&Load<'_>) -> T) -> T {
+    let bytes = draft.bytes();
+    let table = Table::new(&bytes).expect("a sound table");
+    then(&table.load(payload).expect("a payload of the table"))
+}
+
+/// The knots of a branch, solved once.
 fn knots(drive: Drive, branch: usize, entry: &BranchEntry) -> Vec<f32> {
+    static SOLVED: [OnceLock<Vec<f32>>; 6] = [const { OnceLock::new() }; 6];
+    let place = 3 * usize::from(drive == Drive::AppliedCouple) + branch;
+    let solved = SOLVED[place].get_or_init(|| solve_knots(drive, branch, entry));
+    solved.clone()
+}
+
+/// Knots at equal steps of the parameter, slopes by differences within the branch (it ends at the folds).
+fn solve_knots(drive: Drive, branch: usize, entry: &BranchEntry) -> Vec<f32> {
     const STEP: f64 = 2e-3;
     let map = entry.map();
-    let (begin, end) = (map.t_f64(entry.from.into()), map.t_f64(entry.to.into()));
+    let (begin, end) = (
+        parameter(&map, entry.from.into()),
+        parameter(&map, entry.to.into()),
+    );
     // From anchor to anchor as they are before rounding: against rounded ones the branch is not smooth at its folds.
     let (from, to) = [(RANGE.0, fold()), (-fold(), fold()), (-fold(), RANGE.1)][branch];
     let unit = ParameterMap {
@@ -213,8 +357,8 @@ fn knots(drive: Drive, branch: usize, entry: &BranchEntry) -> Vec<f32> {
         anchor_to: 1.0,
         ..map
     };
-    let setpoint = |t: f64| from + (to - from) * unit.setpoint_f64(t);
-    let value = |t: f64, quantity: usize| exact(drive, branch, setpoint(t))[quantity];
+    let at = |t: f64| from + (to - from) * setpoint(&unit, t);
+    let value = |t: f64, quantity: usize| exact(drive, branch, at(t))[quantity];
     let quantities = if entry.is_stable() { 6 } else { 3 };
     let mut knots = Vec::new();
     for knot in 0..KNOTS {
@@ -241,7 +385,7 @@ fn stretch(
     deducted: Deducted,
 ) -> Stretch {
     let at_fold = Limit {
-        requirement: Requirement::FoldDistance,
+        requirement: Requirement::SetpointReserve,
         value: deducted.setpoint,
         limit: deducted.setpoint,
     };
@@ -255,7 +399,7 @@ fn stretch(
         Drive::AppliedCouple => couple,
     };
     let outer = if outermost < RANGE.1 as f32 {
-        (outermost, Requirement::TensionMax, max_tension_n)
+        (outermost, Requirement::TensionFactor, 1.0)
     } else {
         (RANGE.1 as f32, Requirement::TableRange, RANGE.1 as f32)
     };
@@ -274,6 +418,7 @@ fn stretch(
     if branch == 0 {
         Stretch {
             branch: 0,
+            points: 4,
             from: -outer.0,
             to: (entry.to - deducted.setpoint).min(outer.0),
             from_limit: limit(-1.0),
@@ -282,6 +427,7 @@ fn stretch(
     } else {
         Stretch {
             branch: 2,
+            points: 7,
             from: (entry.from + deducted.setpoint).max(-outer.0),
             to: outer.0,
             from_limit: at_fold,

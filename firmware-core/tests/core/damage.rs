@@ -3,11 +3,11 @@
 use firmware_core::format::{MAGIC, VERSION};
 use firmware_core::table::{Fault, Section};
 use firmware_core::{
-    Answer, Config, Drive, Pose, Present, Table, TableError, choose, which_branch,
+    Answer, Drive, Payload, Pose, Present, Table, TableError, choose, which_branch,
 };
 use proptest::prelude::*;
 
-use crate::arm::{draft, draft_with_gap, reseal};
+use crate::arm::{draft, draft_with_gap, draft_with_payloads, reseal};
 use crate::seed::cases;
 
 /// Where the knots begin.
@@ -113,24 +113,42 @@ fn use_it(bytes: &[u8], setpoint: f32, request: f32, mean: f32) -> Result<bool, 
     };
     let limits = table.limits();
     prop_assert!(table.header().is_ok());
-    let config = Config::new(0.01).expect("a sound distance");
+    let mut payloads = vec![Payload::Unknown, Payload::Known(mean)];
     for slice in table.slices() {
+        payloads.extend([slice.payload_kg, slice.payload_kg.next_up()].map(Payload::Known));
         for state in slice.all_at(setpoint) {
             prop_assert!(state.mean_angle_rad.is_finite() && state.energy_j.is_finite());
             prop_assert!(state.potential_j(limits.drive).is_finite());
         }
-        let pose = Pose {
-            tip_angle_rad: setpoint,
-            mean_angle_rad: mean,
+    }
+    let pose = Pose {
+        tip_angle_rad: setpoint,
+        mean_angle_rad: mean,
+    };
+    for payload in payloads {
+        let load = match table.load(payload) {
+            Ok(load) => load,
+            Err(error) => {
+                prop_assert!(!error.to_string().is_empty());
+                continue;
+            }
         };
-        if let Err(error) = which_branch(&slice, setpoint, pose) {
+        prop_assert!(load.slices().count() >= 1);
+        if let Err(error) = which_branch(&load, setpoint, pose) {
             prop_assert!(!error.to_string().is_empty());
         }
-        for branch in 0..=slice.branch_count() {
-            let answer = choose(&slice, &config, Present { branch, setpoint }, request);
+        for branch in 0..=32 {
+            let answer = choose(&load, Present { branch, setpoint }, request);
             prop_assert!(!answer.to_string().is_empty());
-            if let Answer::Go { tensions, .. } = answer {
-                prop_assert!(tensions.allowed(&limits));
+            if let Answer::Go {
+                setpoint,
+                tensions,
+                reserves,
+            } = answer
+            {
+                prop_assert!(tensions.allowed(&limits) && load.safe_at(branch, setpoint));
+                prop_assert!(reserves.to_values().into_iter().all(f32::is_finite));
+                prop_assert_eq!(load.reserves(branch, setpoint), Some(reserves));
             }
         }
     }
@@ -141,7 +159,7 @@ proptest! {
     #![proptest_config(cases(1000))]
 
     #[test]
-    fn every_flipped_bit_of_the_knots_is_noticed(place in any::<prop::sample::Index>(), bit in 0u8..8) {
+    fn every_flipped_bit_of_knots_and_reserves_is_noticed(place in any::<prop::sample::Index>(), bit in 0u8..8) {
         let mut bytes = draft(Drive::HeldTip, 60.0).bytes();
         let start = knots_at(&bytes);
         let at = start + place.index(bytes.len() - start);
@@ -190,11 +208,17 @@ proptest! {
     fn changed_bytes_under_a_right_checksum_are_survived(
         changes in prop::collection::vec((any::<prop::sample::Index>(), any::<u8>()), 1..6),
         in_directory: bool,
+        several: bool,
         setpoint in -1.1f32..1.1,
         request in any::<f32>(),
         mean in -2f32..2.0,
     ) {
-        let mut bytes = draft_with_gap(Drive::HeldTip, 16.0).bytes();
+        let draft = if several {
+            draft_with_payloads(16.0)
+        } else {
+            draft_with_gap(Drive::HeldTip, 60.0)
+        };
+        let mut bytes = draft.bytes();
         let end = if in_directory { knots_at(&bytes) } else { bytes.len() - 4 };
         for (place, byte) in changes {
             bytes[place.index(end)] = byte;

@@ -1,7 +1,8 @@
 //! Writer against reader.
 
-use firmware_core::format::write::{BranchContents, Contents, Part, SliceContents, WriteError};
-use firmware_core::format::write::{buffer_len, write};
+use firmware_core::format::write::{
+    BranchContents, Contents, Part, SliceContents, StretchContents, WriteError, buffer_len, write,
+};
 use firmware_core::{BranchEntry, Drive, Table};
 
 use crate::arm::{crc32, draft, draft_with_gap};
@@ -9,8 +10,12 @@ use crate::arm::{crc32, draft, draft_with_gap};
 #[test]
 fn what_is_written_is_read() {
     let mut draft = draft_with_gap(Drive::AppliedCouple, 200.0);
-    let mut heavier = draft.slices[0].clone();
-    heavier.payload_kg = 0.08;
+    let mut heavier = draft.slices[0].heavier(0.08, 1.2);
+    // Numbers are labels: this slice lacks one and has one that the other lacks.
+    heavier.branches[2].0.number = 9;
+    for (stretch, _) in &mut heavier.stretches[1..] {
+        stretch.branch = 9;
+    }
     draft.slices.push(heavier);
     let bytes = draft.bytes();
     let table = Table::new(&bytes).expect("a sound table");
@@ -31,9 +36,21 @@ fn what_is_written_is_read() {
             assert_eq!(branch.knot_value(0, entry.floats_per_knot()), None);
             assert_eq!(branch.knot_value(entry.knots, 0), None);
         }
-        for number in 0..=slice.branch_count() {
-            let of_branch = written.stretches.iter().filter(|s| s.branch == number);
-            assert!(slice.stretches(number).eq(of_branch.copied()));
+        assert_eq!(usize::from(slice.stretch_count()), written.stretches.len());
+        for number in 0..=32 {
+            let entry = written.branches.iter().find(|(e, _)| e.number == number);
+            let found = slice.branch(number).map(|branch| branch.entry);
+            assert_eq!(found, entry.map(|(entry, _)| *entry));
+            let mut found = slice.stretches(number);
+            for (entry, values) in written.stretches.iter().filter(|(s, _)| s.branch == number) {
+                let usable = found.next().expect("as many as written");
+                assert_eq!(usable.entry, *entry);
+                assert!(usable.reserve_values().eq(values.iter().copied()));
+                assert_eq!(usable.point(entry.points), None);
+                let last = usable.point(entry.points - 1).expect("a point").to_values();
+                assert_eq!(last[..], values[values.len() - last.len()..]);
+            }
+            assert!(found.next().is_none());
         }
     }
 }
@@ -112,6 +129,28 @@ fn the_writer_says_what_the_format_cannot_hold() {
         found: knots.len() - 1,
     };
     assert_eq!(write(&contents, &mut buffer), Err(expected));
+
+    let (stretch, reserves) = &draft.slices[0].stretches[0];
+    let broken = [StretchContents {
+        entry: *stretch,
+        reserves: &reserves[1..],
+    }];
+    let broken = [SliceContents {
+        stretches: &broken,
+        ..slice
+    }];
+    let contents = Contents {
+        slices: &broken,
+        ..contents
+    };
+    let expected = WriteError::ReserveValues {
+        slice: 0,
+        stretch: 0,
+        expected: reserves.len(),
+        found: reserves.len() - 1,
+    };
+    assert_eq!(write(&contents, &mut buffer), Err(expected));
+    assert!(!expected.to_string().is_empty());
 
     let many = vec![branch; 256];
     let many = [SliceContents {

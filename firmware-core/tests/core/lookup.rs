@@ -5,7 +5,7 @@ use proptest::prelude::*;
 
 use crate::arm::{RANGE, draft, exact, fold, scale};
 use crate::seed::cases;
-use crate::tolerance;
+use crate::{parameter, tolerance};
 
 /// Setpoints per branch of the dense comparison.
 const GRID: u32 = 20_011;
@@ -144,10 +144,7 @@ fn what_cannot_be_looked_up_says_why() {
     for setpoint in [f32::NAN, f32::INFINITY, f32::NEG_INFINITY] {
         assert_eq!(slice.at(0, setpoint), Err(LookupError::NotFinite));
     }
-    let missing = LookupError::NoSuchBranch {
-        branch: 3,
-        branches: 3,
-    };
+    let missing = LookupError::NoSuchBranch { branch: 3 };
     assert_eq!(slice.at(3, 0.0), Err(missing));
     let outside = LookupError::OutsideBranch {
         setpoint: 0.5,
@@ -167,9 +164,9 @@ proptest! {
         let map = ParameterMap { anchor_from: from, anchor_to: from + span, fold_from, fold_to };
         prop_assume!(map.anchor_from < map.anchor_to);
         let setpoint = (from + u * span).clamp(map.anchor_from, map.anchor_to);
-        let exact = map.t_f64(setpoint.into());
+        let exact = parameter::parameter(&map, setpoint.into());
         prop_assert!((f64::from(map.t(setpoint)) - exact).abs() <= tolerance::PARAMETER);
-        let back = map.setpoint_f64(exact);
+        let back = parameter::setpoint(&map, exact);
         prop_assert!((back - f64::from(setpoint)).abs() <= tolerance::PARAMETER_INVERSE);
     }
 

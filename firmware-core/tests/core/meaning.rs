@@ -1,7 +1,8 @@
 //! Tables that arrive as written and say what cannot be.
 
+use firmware_core::format::RESERVES;
 use firmware_core::table::{BranchFault, Fault, StretchFault};
-use firmware_core::{Drive, Table, TableError};
+use firmware_core::{Drive, Table, TableError, UNBOUNDED};
 
 use crate::arm::{Draft, draft, reseal};
 
@@ -50,7 +51,8 @@ fn header_values_out_of_range() {
         ("offset_m", |d, v| d.header.offset_m = v),
         ("max_tension_n", |d, v| d.header.max_tension_n = v),
     ];
-    let not_negative: [(&str, Change); 9] = [
+    let not_negative: [(&str, Change); 10] = [
+        ("nominal_payload_kg", |d, v| d.header.nominal_payload_kg = v),
         ("pretension_n", |d, v| d.header.pretension_n = v),
         ("worst_error.mean_angle_rad", |d, v| {
             d.header.worst_error.mean_angle_rad = v;
@@ -126,6 +128,12 @@ fn slices_that_do_not_add_up() {
         previous: Some(0.06),
     };
     assert_eq!(equal, expected);
+    let nominal = fault_of(|d| d.header.nominal_payload_kg = 0.061);
+    let expected = Fault::NominalPayload {
+        nominal_kg: 0.061,
+        nearest_kg: 0.06,
+    };
+    assert_eq!(nominal, expected);
     for payload in [-0.1, f32::NAN, f32::INFINITY] {
         let fault = fault_of(|d| d.slices[0].payload_kg = payload);
         assert!(matches!(
@@ -137,6 +145,40 @@ fn slices_that_do_not_add_up() {
             }
         ));
     }
+}
+
+#[test]
+fn numbers_that_are_no_labels() {
+    let number = |number: u8, previous| BranchFault::Number { number, previous };
+    let fault = branch_fault_of(2, |d| d.slices[0].branches[2].0.number = 32);
+    assert_eq!(fault, number(32, Some(1)));
+    let fault = branch_fault_of(0, |d| d.slices[0].branches[0].0.number = 255);
+    assert_eq!(fault, number(255, None));
+    let fault = branch_fault_of(1, |d| {
+        d.slices[0].branches[0].0.exits = 0;
+        d.slices[0].branches[1].0.number = 0;
+    });
+    assert_eq!(fault, number(0, Some(0)));
+    let fault = branch_fault_of(1, |d| d.slices[0].branches[0].0.number = 9);
+    assert_eq!(fault, number(1, Some(9)));
+    // The pass of one slice cannot be the well of another.
+    let swapped = |d: &mut Draft| {
+        let mut heavier = d.slices[0].heavier(0.08, 1.2);
+        heavier.branches.drain(..2);
+        heavier.branches[0].0.number = 1;
+        heavier.branches[0].0.exits = 0;
+        heavier.stretches.clear();
+        d.slices.push(heavier);
+    };
+    let expected = Fault::Branch {
+        slice: 1,
+        branch: 0,
+        fault: BranchFault::Stability {
+            number: 1,
+            index: 0,
+        },
+    };
+    assert_eq!(fault_of(swapped), expected);
 }
 
 #[test]
@@ -164,6 +206,13 @@ fn branches_that_cannot_be() {
     ));
     assert_eq!(fault(|e| e.exits = 0b1), BranchFault::Exit { exit: 0 });
     assert_eq!(fault(|e| e.exits = 0b1000), BranchFault::Exit { exit: 3 });
+    // Exits go by number, not by place.
+    let renumbered = branch_fault_of(0, |d| {
+        d.slices[0].branches[1].0.number = 5;
+        d.slices[0].branches[2].0.number = 6;
+        d.slices[0].stretches[1].0.branch = 6;
+    });
+    assert_eq!(renumbered, BranchFault::Exit { exit: 1 });
     assert_eq!(fault(|e| e.exits = 1 << 31), BranchFault::Exit { exit: 31 });
     let unstable = branch_fault_of(1, |d| d.slices[0].branches[1].0.exits = 2);
     assert_eq!(unstable, BranchFault::ExitOfUnstable { exits: 2 });
@@ -202,7 +251,7 @@ fn knots_that_cannot_be() {
 #[test]
 fn stretches_that_cannot_be() {
     type Change = fn(&mut firmware_core::Stretch);
-    let fault = |change: Change| stretch_fault_of(1, |d| change(&mut d.slices[0].stretches[1]));
+    let fault = |change: Change| stretch_fault_of(1, |d| change(&mut d.slices[0].stretches[1].0));
     let missing = fault(|s| s.branch = 7);
     assert_eq!(missing, StretchFault::NoSuchBranch { branch: 7 });
     let unstable = fault(|s| s.branch = 1);
@@ -229,9 +278,9 @@ fn stretches_that_cannot_be() {
     };
     assert_eq!(order, expected);
     let touching = stretch_fault_of(2, |d| {
-        let mut above = d.slices[0].stretches[1];
-        d.slices[0].stretches[1].to = 0.2;
-        above.from = 0.2;
+        let mut above = d.slices[0].stretches[1].clone();
+        d.slices[0].stretches[1].0.to = 0.2;
+        above.0.from = 0.2;
         d.slices[0].stretches.push(above);
     });
     let expected = StretchFault::Overlap {
@@ -239,6 +288,35 @@ fn stretches_that_cannot_be() {
         from: 0.2,
     };
     assert_eq!(touching, expected);
+}
+
+#[test]
+fn reserves_that_cannot_be() {
+    let one_point = stretch_fault_of(1, |d| {
+        let (stretch, values) = &mut d.slices[0].stretches[1];
+        stretch.points = 1;
+        values.truncate(RESERVES);
+    });
+    assert_eq!(one_point, StretchFault::TooFewPoints { points: 1 });
+    let fault =
+        |at: usize, value: f32| stretch_fault_of(1, |d| d.slices[0].stretches[1].1[at] = value);
+    let never = [f32::NAN, f32::INFINITY, f32::NEG_INFINITY, 2e9];
+    for value in never {
+        for place in 0..RESERVES {
+            let expected = StretchFault::Reserve {
+                point: 3,
+                place: place as u8,
+            };
+            assert_eq!(fault(3 * RESERVES + place, value), expected);
+        }
+    }
+    // The strain alone is never negative, and "no bound" is allowed.
+    let expected = StretchFault::Reserve { point: 0, place: 8 };
+    assert_eq!(fault(8, -1e-6), expected);
+    let mut sound = draft(Drive::HeldTip, 60.0);
+    sound.slices[0].stretches[1].1[..8]
+        .copy_from_slice(&[-0.5, -0.5, 0.0, 0.0, 1.0, 1e9, UNBOUNDED, UNBOUNDED]);
+    assert!(Table::new(&sound.bytes()).is_ok());
 }
 
 /// Adds to (or takes from) one section and its length, and puts total length and checksum right.
@@ -284,6 +362,19 @@ fn sections_that_are_too_long_or_too_short() {
     let left = Fault::KnotsLeftOver { bytes: 4 };
     assert_eq!(longer(16, 4, knots_end), left);
     let missing = shorter(16, 4, knots_end);
+    let expected = StretchFault::ReservesMissing {
+        expected: 7 * 36,
+        found: 7 * 36 - 4,
+    };
+    let expected = Fault::Stretch {
+        slice: 0,
+        stretch: 1,
+        fault: expected,
+    };
+    assert_eq!(missing, expected);
+    // Without any reserves the knots themselves are too few.
+    let reserves = 11 * 36;
+    let missing = fault(&resized(&bytes, 16, 4, knots_end, -reserves - 4));
     assert!(matches!(
         missing,
         Fault::Branch {

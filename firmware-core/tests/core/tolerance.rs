@@ -24,6 +24,10 @@ pub const PARAMETER_INVERSE: f64 = 2e-11;
 /// over 0.01 m against 0.77 N/unit of setpoint, some 1e-6 N.
 pub const REACH: f32 = 1e-5;
 
+/// Reserves of up to about 5 between points: an f32 has 6e-8 of that; the point's setpoint, the place between two points
+/// and the straight line add some roundings.
+pub const RESERVES: f32 = 2e-6;
+
 /// Numbers in messages have five decimals.
 pub const MESSAGE: f64 = 0.6e-5;
 

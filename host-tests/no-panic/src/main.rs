@@ -9,7 +9,9 @@ use core::fmt::{self, Write};
 use core::hint::black_box;
 use core::panic::PanicInfo;
 
-use firmware_core::{Config, Pose, Present, Table, choose, which_branch};
+use firmware_core::{
+    Answer, Load, Payload, Pose, Present, Slice, Table, TensionPair, choose, which_branch,
+};
 
 unsafe extern "C" {
     /// Defined nowhere: the linker names it when a panic path is left.
@@ -65,11 +67,20 @@ fn exercise(bytes: &[u8]) {
     }
     for slice in table.slices() {
         lookups(&slice);
-        decisions(&slice);
+        stretches(&slice);
+    }
+    for payload in [Payload::Unknown, Payload::Known(black_box(0.0))] {
+        match table.load(black_box(payload)) {
+            Ok(load) => {
+                together(&load);
+                decisions(&load);
+            }
+            Err(error) => say(&error),
+        }
     }
 }
 
-fn lookups(slice: &firmware_core::Slice<'_>) {
+fn lookups(slice: &Slice<'_>) {
     let setpoint: f32 = black_box(0.0);
     match slice.at(black_box(0), setpoint) {
         Ok(state) => {
@@ -91,30 +102,62 @@ fn lookups(slice: &firmware_core::Slice<'_>) {
         }
     }
     black_box((slice.branch(black_box(0)), slice.branch_count()));
-    for stretch in slice.stretches(black_box(0)) {
-        say(&stretch.from_limit);
+}
+
+fn stretches(slice: &Slice<'_>) {
+    for usable in slice.stretches(black_box(0)) {
+        say(&usable.entry.from_limit);
+        black_box((usable.contains(black_box(0.0)), usable.point(black_box(0))));
+        for value in usable.reserve_values() {
+            black_box(value);
+        }
+        if let Some(reserves) = usable.reserves(black_box(0.0)) {
+            say(&reserves);
+        }
+    }
+    let setpoint: f32 = black_box(0.0);
+    black_box((
+        slice.stretch_count(),
+        slice.stretch_at(black_box(0), setpoint),
+        slice.reserves(black_box(0), setpoint),
+    ));
+}
+
+fn together(load: &Load<'_>) {
+    let (branch, setpoint): (u8, f32) = (black_box(0), black_box(0.0));
+    black_box((load.payload(), load.safe_at(branch, setpoint)));
+    for slice in load.slices() {
+        black_box(slice);
+    }
+    for number in load.branches() {
+        black_box(number);
+    }
+    match load.state(branch, setpoint) {
+        Ok(state) => {
+            black_box(TensionPair::factor(state.couple_n_m, &load.limits()));
+        }
+        Err(error) => say(&error),
+    }
+    if let Some(reserves) = load.reserves(branch, setpoint) {
+        black_box(reserves.worse(&reserves).to_values());
     }
 }
 
-fn decisions(slice: &firmware_core::Slice<'_>) {
+fn decisions(load: &Load<'_>) {
     let pose = Pose {
         tip_angle_rad: black_box(0.0),
         mean_angle_rad: black_box(0.0),
     };
-    match which_branch(slice, black_box(0.0), pose) {
+    match which_branch(load, black_box(0.0), pose) {
         Ok(seat) => {
             black_box(seat);
         }
         Err(error) => say(&error),
     }
-    let config = match Config::new(black_box(0.0)) {
-        Ok(config) => config,
-        Err(error) => return say(&error),
-    };
-    black_box(config.fold_distance());
     let present = Present {
         branch: black_box(0),
         setpoint: black_box(0.0),
     };
-    say(&choose(slice, &config, present, black_box(0.0)));
+    let answer: Answer = choose(load, present, black_box(0.0));
+    say(&answer);
 }

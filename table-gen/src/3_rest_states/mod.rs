@@ -217,6 +217,21 @@ impl RestStates {
         Err(RestStatesError::TooSoft { gamma })
     }
 
+    /// How far a stored fold may be from the exact one (rad or N m): what the number of modes leaves, and rounding to f32.
+    pub fn fold_uncertainty_si(&self) -> f64 {
+        let largest = self
+            .rod
+            .setpoints
+            .iter()
+            .map(|s| self.rod.setpoint_si(*s).abs())
+            .fold(0.0, f64::max);
+        let modes = match self.rod.held {
+            Held::TipAngle => self.distance.angle_rad,
+            Held::TipCouple => self.distance.couple * self.rod.energy_scale_j,
+        };
+        modes + 2.0 * largest * f64::from(f32::EPSILON)
+    }
+
     /// Every rest state at `setpoint` (dimensionless, within the range), by base curvature, with its branch number.
     ///
     /// # Errors

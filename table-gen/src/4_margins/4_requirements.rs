@@ -11,6 +11,8 @@ use rayon::prelude::*;
 /// Reserves of a rest state in one corner, SI; `None` where no bound was found.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Margins {
+    /// The branch of the corner's own rest states that it lies on.
+    pub branch: usize,
     /// Energy to the lowest pass out of the well (J).
     pub barrier_j: Option<f64>,
     /// Lateral impulse at the tip that carries that energy (N s).
@@ -18,7 +20,7 @@ pub struct Margins {
     /// Bending stiffness that can be lost beyond the tolerance until the same, as a fraction of the nominal; only known from the
     /// softest corners.
     pub stiffness_reserve: Option<f64>,
-    /// Distance of the setpoint to the nearest fold of the branch (rad or N m).
+    /// Distance of the setpoint to the nearest fold of the branch, less how far the fold may be off (rad or N m).
     pub setpoint_reserve: Option<f64>,
     /// Restoring stiffness along the mean angle (N m/rad).
     pub restoring_n_m_per_rad: f64,
@@ -314,6 +316,7 @@ impl<'a> Assessor<'a> {
         let available = (tendons.max_tension_n - tendons.pretension_n) * tendons.offset_m;
         let needed = state.couple.abs() * rod.energy_scale_j;
         Margins {
+            branch: states.numbers[place],
             barrier_j,
             knock_n_s: barrier_j.map(|barrier| {
                 (2.0 * stations.tip_mass_kg(modal, rod, arm, &shape) * barrier.max(0.0)).sqrt()
@@ -330,7 +333,7 @@ impl<'a> Assessor<'a> {
                 .into_iter()
                 .flatten()
                 .min_by(f64::total_cmp)
-                .map(|d| rod.setpoint_si(d)),
+                .map(|distance| rod.setpoint_si(distance) - rest.fold_uncertainty_si()),
             restoring_n_m_per_rad: modal.restoring_stiffness(&state.c).unwrap_or(0.0)
                 * rod.energy_scale_j,
             // A couple this small needs no tendon worth speaking of.

@@ -1,49 +1,45 @@
 //! From rest states to the bytes the firmware reads, and the errors it will make with them.
 
-#[path = "2_knots.rs"]
+#[path = "3_knots.rs"]
 mod knots;
+#[path = "2_labels.rs"]
+mod labels;
 #[path = "1_parameter.rs"]
 mod parameter;
-#[path = "5_readable.rs"]
+#[path = "6_readable.rs"]
 pub mod readable;
-#[path = "3_stretches.rs"]
+#[path = "4_stretches.rs"]
 mod stretches;
-#[path = "4_worst_errors.rs"]
+#[path = "5_worst_errors.rs"]
 mod worst_errors;
 
 use crate::arm_file::Arm;
-use crate::margins::corners::{Corners, Levels};
+use crate::margins::corners::{CornerArm, Corners, Levels};
 use crate::margins::requirements::Assessor;
 use crate::margins::usable::Usable;
 use crate::rest_states::curve::Solver;
 use crate::rest_states::wells::wells;
 use crate::rest_states::{RestStates, RestStatesError};
 use crate::rod::{Held, Rod};
+use firmware_core::format::MOST_BRANCHES;
 use firmware_core::format::write::{
-    BranchContents, Contents, SliceContents, WriteError, buffer_len, write,
+    BranchContents, Contents, SliceContents, StretchContents, WriteError, buffer_len, write,
 };
-use firmware_core::{
-    BranchEntry, Deducted, Drive, Header, Stretch, Table, TableError, Units, WorstError,
-};
-use knots::{Quantities, Sampler};
+use firmware_core::{BranchEntry, Deducted, Drive, Header, Table, TableError, Units, WorstError};
+use knots::{Knot, Quantities, Sampler};
 use std::fmt;
-
-/// Branches a slice can hold: the firmware keeps the passes out of a well in 32 bits.
-const MOST_BRANCHES: usize = 32;
+use stretches::{StoredStretch, stored_stretch};
+use worst_errors::Measured;
 
 /// A finished table with what it was made from.
 #[derive(Clone, Debug)]
 pub struct Tabulation {
     /// The arm.
     pub arm: Arm,
-    /// Its certified rest states; branch numbers are positions in `rest.branches`.
-    pub rest: RestStates,
-    /// The corners of its tolerances with their rest states.
+    /// The corners of its tolerances with their rest states; branch numbers are positions in `corners.nominal.branches`.
     pub corners: Corners,
     /// What is usable, and everything that was assessed on the way.
     pub usable: Usable,
-    /// Stretches that may be commanded, by branch and setpoint.
-    pub stretches: Vec<Stretch>,
     /// Worst differences between the firmware's answers and fresh solves.
     pub worst_error: WorstError,
     /// The same of the barriers (J).
@@ -112,98 +108,122 @@ impl From<RestStatesError> for TabulationError {
     }
 }
 
+/// Share of the progress that finding the corners' rest states, assessing them, and the knots take.
+const SHARES: [f64; 3] = [0.15, 0.65, 0.2];
+
 /// Makes the table of `arm`. `progress` is called with the fraction done, 0 to 1.
 ///
 /// # Errors
 /// See [`TabulationError`].
-pub fn tabulate(arm: &Arm, progress: &mut dyn FnMut(f64)) -> Result<Tabulation, TabulationError> {
-    let rod = Rod::new(arm);
-    progress(0.0);
-    let corners = Corners::find(arm, Levels::EndsAndMiddle, &|_| {})?;
-    let usable = Usable::find(&Assessor::new(arm, &corners), &mut |_| {})?;
-    let rest = corners.nominal.clone();
-    progress(0.3);
-    if rest.branches.len() > MOST_BRANCHES {
-        return Err(TabulationError::TooManyBranches {
-            found: rest.branches.len(),
-        });
-    }
-    let mut samplers: Vec<Sampler> = rest
-        .branches
-        .iter()
-        .map(|branch| Sampler::new(&rest, branch))
-        .collect();
-    let allowed = allowed_errors(arm, &rod);
-    let mut knots = Vec::new();
-    for sampler in &mut samplers {
-        let lost = RestStatesError::CurveLost {
-            setpoint: sampler.cover()[0],
-        };
-        knots.push(sampler.knots(&allowed).ok_or(lost)?);
-        progress(0.3 + 0.2 * knots.len() as f64 / rest.branches.len() as f64);
-    }
-    let setpoints: Vec<f64> = samplers
-        .iter()
-        .zip(&knots)
-        .flat_map(|(sampler, knots)| knots.iter().map(|knot| sampler.map().setpoint(knot.t())))
-        .collect();
-    let exits = exits(&rest, &setpoints)?;
-    progress(0.6);
-    let branches: Vec<(BranchEntry, Vec<f32>)> = samplers
-        .iter()
-        .zip(&knots)
-        .zip(&exits)
-        .map(|((sampler, knots), &exits)| sampler.stored(knots, exits))
-        .collect();
+pub fn tabulate(arm: &Arm, progress: &(dyn Fn(f64) + Sync)) -> Result<Tabulation, TabulationError> {
+    let corners = Corners::find(arm, Levels::EndsAndMiddle, &|done| {
+        progress(SHARES[0] * done)
+    })?;
+    let usable = Usable::find(&Assessor::new(arm, &corners), &mut |done| {
+        progress(SHARES[0] + SHARES[1] * done)
+    })?;
+    let rod = &corners.nominal.rod;
+    let allowed = allowed_errors(arm, rod);
+    let mut slices = (0..corners.payloads_kg.len())
+        .map(|slice| SliceTable::new(&corners, &usable, slice, &allowed))
+        .collect::<Result<Vec<_>, TabulationError>>()?;
+    progress(SHARES[0] + SHARES[1] + 0.5 * SHARES[2]);
 
-    // First without stretches, to measure the errors that shorten them.
+    // First without stretches, to measure the errors that the header states.
     let draft = assemble(
         arm,
-        &rest,
-        &branches,
-        &[],
+        &corners,
+        &slices,
+        None,
         WorstError::default(),
         Deducted::default(),
     )?;
     let table = Table::new(&draft).map_err(TabulationError::Refused)?;
-    let measured = worst_errors::measure(&table, &rest, &mut samplers, &knots, &mut |done| {
-        progress(0.6 + 0.3 * done)
-    })?;
-    measured.within(&allowed)?;
-    let deducted = Deducted {
-        setpoint: fold_uncertainty(&rest) as f32,
-        tension_n: (f64::from(measured.worst.couple_n_m) / arm.tendons.offset_m) as f32,
-    };
-    let mut stretches = Vec::new();
-    for (number, sampler) in samplers.iter_mut().enumerate() {
-        if rest.branches[number].index == 0 {
-            let lost = RestStatesError::CurveLost {
-                setpoint: sampler.cover()[0],
-            };
-            let mut search = stretches::Search {
-                sampler,
-                tendons: &arm.tendons,
-                energy_scale_j: rod.energy_scale_j,
-                deducted,
-            };
-            stretches.extend(search.run(number as u8).ok_or(lost)?);
-        }
+    let mut measured = Measured::default();
+    for (slice, made) in table.slices().zip(&mut slices) {
+        measured.slice(&slice, made)?;
     }
-    let bytes = assemble(arm, &rest, &branches, &stretches, measured.worst, deducted)?;
+    measured.within(&allowed)?;
+    let worst_error = measured.worst(rod.held);
+    let deducted = Deducted {
+        setpoint: corners.nominal.fold_uncertainty_si() as f32,
+        tension_n: (f64::from(worst_error.couple_n_m) / arm.tendons.offset_m) as f32,
+    };
+    let bytes = assemble(arm, &corners, &slices, Some(&usable), worst_error, deducted)?;
     Table::new(&bytes).map_err(TabulationError::Refused)?;
     progress(1.0);
-    drop(samplers);
+    drop(slices);
     Ok(Tabulation {
         arm: arm.clone(),
-        rest,
         corners,
         usable,
-        stretches,
-        worst_error: measured.worst,
+        worst_error,
         worst_barrier_error_j: measured.barrier_j,
         compared: measured.compared,
         bytes,
     })
+}
+
+/// What is stored of the arm with one payload.
+struct SliceTable<'a> {
+    payload_kg: f64,
+    rest: &'a RestStates,
+    samplers: Vec<Sampler<'a>>,
+    knots: Vec<Vec<Knot>>,
+    /// By branch in the order of `samplers`: the directory entry and the stored knots.
+    stored: Vec<(BranchEntry, Vec<f32>)>,
+}
+
+impl<'a> SliceTable<'a> {
+    fn new(
+        corners: &'a Corners,
+        usable: &Usable,
+        slice: usize,
+        allowed: &Quantities,
+    ) -> Result<Self, TabulationError> {
+        let own = |corner: &CornerArm| {
+            corner.slice == slice
+                && corner.corner.stiffness_percent == 0.0
+                && corner.corner.tilt_deg == 0.0
+        };
+        let arm = corners
+            .arms
+            .iter()
+            .position(own)
+            .expect("every slice has its own arm among the corners");
+        let rest = &corners.arms[arm].rest;
+        let numbered = labels::numbered(corners, usable, arm);
+        if let Some(beyond) = numbered
+            .iter()
+            .find(|n| n.number >= usize::from(MOST_BRANCHES))
+        {
+            return Err(TabulationError::TooManyBranches {
+                found: beyond.number + 1,
+            });
+        }
+        let mut samplers: Vec<Sampler> = numbered.iter().map(|&n| Sampler::new(rest, n)).collect();
+        let mut knots = Vec::new();
+        for sampler in &mut samplers {
+            let lost = RestStatesError::CurveLost {
+                setpoint: sampler.cover()[0],
+            };
+            knots.push(sampler.knots(allowed).ok_or(lost)?);
+        }
+        let exits = exits(rest, &samplers, &knots)?;
+        let stored = samplers
+            .iter()
+            .zip(&knots)
+            .zip(&exits)
+            .map(|((s, knots), &exits)| s.stored(knots, exits))
+            .collect();
+        Ok(Self {
+            payload_kg: corners.payloads_kg[slice],
+            rest,
+            samplers,
+            knots,
+            stored,
+        })
+    }
 }
 
 /// Errors the arm file allows, in the order of the table's quantities.
@@ -224,28 +244,23 @@ fn allowed_errors(arm: &Arm, rod: &Rod) -> Quantities {
     ]
 }
 
-/// How far a stored fold may be from the exact one, in units of the setpoint: the modes' part and f32 rounding.
-fn fold_uncertainty(rest: &RestStates) -> f64 {
-    let largest = rest
-        .rod
-        .setpoints
-        .iter()
-        .map(|s| rest.rod.setpoint_si(*s).abs())
-        .fold(0.0, f64::max);
-    let modes = match rest.rod.held {
-        Held::TipAngle => rest.distance.angle_rad,
-        Held::TipCouple => rest.distance.couple * rest.rod.energy_scale_j,
-    };
-    modes + 2.0 * largest * f64::from(f32::EPSILON)
-}
-
-/// For each branch, the bits of the passes that lead out of it at any of `setpoints` (SI). Every one of them is also a
-/// check that the list of rest states there is complete.
-fn exits(rest: &RestStates, setpoints: &[f64]) -> Result<Vec<u32>, RestStatesError> {
+/// For each of the numbered branches, the bits of the passes that lead out of it at any knot's setpoint. Every one of them
+/// is also a check that the list of rest states there is complete.
+fn exits(
+    rest: &RestStates,
+    samplers: &[Sampler],
+    knots: &[Vec<Knot>],
+) -> Result<Vec<u32>, RestStatesError> {
     let mut solver = Solver::new(&rest.modal);
-    let mut exits = vec![0; rest.branches.len()];
-    for &setpoint in setpoints {
-        let at = rest.rod.setpoint_from_si(setpoint);
+    let mut exits = vec![0; samplers.len()];
+    let each = samplers.iter().zip(knots);
+    for setpoint in
+        each.flat_map(|(sampler, knots)| knots.iter().map(|knot| sampler.map().setpoint(knot.t())))
+    {
+        let at = rest
+            .rod
+            .setpoint_from_si(setpoint)
+            .clamp(rest.rod.setpoints[0], rest.rod.setpoints[1]);
         // At a fold itself two states are one, and there is no telling pass from well.
         if rest
             .folds
@@ -255,28 +270,38 @@ fn exits(rest: &RestStates, setpoints: &[f64]) -> Result<Vec<u32>, RestStatesErr
             continue;
         }
         let states = rest.at(&mut solver, at)?;
-        let (numbers, points): (Vec<usize>, Vec<_>) = states.into_iter().unzip();
+        let (branches, points): (Vec<usize>, Vec<_>) = states.into_iter().unzip();
         let wells = wells(&rest.modal, &points)
             .map_err(|_| RestStatesError::PassWithoutWells { setpoint })?;
+        let numbered = |state: usize| {
+            samplers.iter().position(|sampler| {
+                let [from, to] = sampler.cover();
+                sampler.branch() == branches[state] && (from..=to).contains(&setpoint)
+            })
+        };
         for (pass, joined) in wells.joins.iter().enumerate() {
-            if let Some([a, b]) = joined.filter(|[a, b]| a != b) {
-                exits[numbers[a]] |= 1 << numbers[pass];
-                exits[numbers[b]] |= 1 << numbers[pass];
+            let Some([a, b]) = joined.filter(|[a, b]| a != b) else {
+                continue;
+            };
+            let Some(pass) = numbered(pass) else { continue };
+            for well in [a, b].into_iter().filter_map(numbered) {
+                exits[well] |= 1 << samplers[pass].number();
             }
         }
     }
     Ok(exits)
 }
 
-/// Writes the table.
+/// Writes the table; without `usable` it has no stretches.
 fn assemble(
     arm: &Arm,
-    rest: &RestStates,
-    branches: &[(BranchEntry, Vec<f32>)],
-    stretches: &[Stretch],
+    corners: &Corners,
+    slices: &[SliceTable],
+    usable: Option<&Usable>,
     worst_error: WorstError,
     deducted: Deducted,
 ) -> Result<Vec<u8>, TabulationError> {
+    let rest = &corners.nominal;
     let rod = &rest.rod;
     let [lo, hi] = rod.setpoints.map(|s| rod.setpoint_si(s) as f32);
     let turn = std::f64::consts::TAU;
@@ -299,24 +324,57 @@ fn assemble(
         max_tension_n: arm.tendons.max_tension_n as f32,
         setpoint_lo: lo,
         setpoint_hi: hi,
+        nominal_payload_kg: arm.payload.mass_kg as f32,
         worst_error,
         deducted,
     };
-    let branches: Vec<BranchContents> = branches
+    let contents: Vec<(Vec<BranchContents>, Vec<StoredStretch>)> = slices
         .iter()
-        .map(|(entry, knots)| BranchContents {
-            entry: *entry,
-            knots,
+        .enumerate()
+        .map(|(slice, made)| {
+            let branches = made
+                .stored
+                .iter()
+                .map(|(entry, knots)| BranchContents {
+                    entry: *entry,
+                    knots,
+                })
+                .collect();
+            let of_slice = usable
+                .into_iter()
+                .flat_map(|u| &u.stretches)
+                .filter(|s| s.slice == slice);
+            let stretches = of_slice
+                .filter_map(|stretch| stored_stretch(stretch, &made.stored))
+                .collect();
+            (branches, stretches)
         })
         .collect();
-    let slice = SliceContents {
-        payload_kg: arm.payload.mass_kg as f32,
-        branches: &branches,
-        stretches,
-    };
+    let stretches: Vec<Vec<StretchContents>> = contents
+        .iter()
+        .map(|(_, stretches)| {
+            stretches
+                .iter()
+                .map(|s| StretchContents {
+                    entry: s.stretch,
+                    reserves: &s.reserves,
+                })
+                .collect()
+        })
+        .collect();
+    let slices: Vec<SliceContents> = contents
+        .iter()
+        .zip(&stretches)
+        .zip(slices)
+        .map(|(((branches, _), stretches), made)| SliceContents {
+            payload_kg: made.payload_kg as f32,
+            branches,
+            stretches,
+        })
+        .collect();
     let contents = Contents {
         header,
-        slices: &[slice],
+        slices: &slices,
     };
     let mut bytes = vec![0; buffer_len(&contents)];
     let len = write(&contents, &mut bytes).map_err(TabulationError::Write)?;

@@ -11,7 +11,8 @@ use crate::rest_states::profile::profile;
 use crate::rest_states::wells::{Wells, wells};
 use crate::rest_states::{RestStates, RestStatesError};
 use crate::table::Tabulation;
-use firmware_core::{Requirement, Table, TensionPair};
+use crate::margins::usable::EndLimit;
+use firmware_core::{Table, TensionPair};
 
 /// Positions of the slider.
 const FRAMES: usize = 97;
@@ -25,7 +26,7 @@ const SEGMENTS: usize = 40;
 /// # Errors
 /// [`RestStatesError`] when a rest state cannot be solved again.
 pub fn gather(tabulation: &Tabulation) -> Result<ReportData, RestStatesError> {
-    let rest = &tabulation.rest;
+    let rest = &tabulation.corners.nominal;
     let gatherer = Gatherer {
         tabulation,
         rest,
@@ -131,27 +132,17 @@ impl Gatherer<'_> {
         })
     }
 
+    /// Setpoints that are usable whatever the payload.
     fn stretches(&self, number: usize) -> Vec<Stretch> {
-        let why = |limit: &firmware_core::Limit| match limit.requirement {
-            Requirement::TableRange => "end of the setpoint range".to_string(),
-            Requirement::FoldDistance => "fold: the branch ends there".to_string(),
-            Requirement::TensionMax => format!(
-                "tension {:.1} N of at most {:.1} N",
-                limit.value, limit.limit
-            ),
+        let why = |limit: &EndLimit| match limit.kind {
+            None => "end of the setpoint range".to_string(),
+            Some(kind) => kind.key_and_unit(&self.tabulation.arm.drive).0.to_string(),
         };
-        let own = self
-            .tabulation
-            .stretches
-            .iter()
-            .filter(|s| usize::from(s.branch) == number);
-        own.map(|s| Stretch {
-            from: f64::from(s.from),
-            to: f64::from(s.to),
-            from_why: why(&s.from_limit),
-            to_why: why(&s.to_limit),
-        })
-        .collect()
+        let slices = self.tabulation.corners.payloads_kg.len();
+        let runs = self.tabulation.usable.any_payload(number, slices);
+        runs.iter()
+            .map(|([from, to], limits)| Stretch { from: *from, to: *to, from_why: why(&limits[0]), to_why: why(&limits[1]) })
+            .collect()
     }
 
     fn point(&self, number: usize, at: f64) -> Result<BranchPoint, RestStatesError> {
@@ -265,11 +256,7 @@ impl Gatherer<'_> {
     }
 
     fn is_usable(&self, branch: usize, setpoint: f64) -> bool {
-        let setpoint = setpoint as f32;
-        self.tabulation
-            .stretches
-            .iter()
-            .any(|s| usize::from(s.branch) == branch && s.contains(setpoint))
+        self.stretches(branch).iter().any(|s| (s.from..=s.to).contains(&setpoint))
     }
 
     fn shape(&self, c: &[f64]) -> Vec<[f64; 2]> {

@@ -5,6 +5,7 @@ use firmware_core::{Drive, Table};
 use indicatif::{ProgressBar, ProgressStyle};
 use std::path::{Path, PathBuf};
 use std::time::Instant;
+use table_gen::margins::usable::EndLimit;
 use table_gen::rest_states::curve::{Branch, BranchEnd};
 use table_gen::table::Tabulation;
 use table_gen::{Outputs, arm_file};
@@ -23,7 +24,7 @@ pub fn run(arguments: &Arguments) -> Result<(), Failure> {
     let begun = Instant::now();
     let arm = arm_file::read(&arguments.arm).map_err(table_gen::BuildError::from)?;
     let bar = progress_bar();
-    let outputs = Outputs::make(&arm, &mut |done| bar.set_position((1000.0 * done) as u64));
+    let outputs = Outputs::make(&arm, &|done| bar.set_position((1000.0 * done) as u64));
     bar.finish_and_clear();
     let outputs = outputs?;
     let directory = arguments
@@ -60,7 +61,8 @@ fn default_directory(arm_file: &Path) -> PathBuf {
 }
 
 fn summarise(tabulation: &Tabulation) {
-    let rest = &tabulation.rest;
+    let corners = &tabulation.corners;
+    let rest = &corners.nominal;
     println!(
         "{}: gamma {:.4}, {} curvature modes",
         tabulation.arm.name,
@@ -68,9 +70,11 @@ fn summarise(tabulation: &Tabulation) {
         rest.modal.modes()
     );
     println!(
-        "rest states audited by shooting at {} setpoints\n",
-        rest.audited
+        "rest states audited by shooting at {} setpoints, and in {} corners of the tolerances",
+        rest.audited,
+        corners.arms.len()
     );
+    println!("usable means: whatever the payload, in every corner\n");
     let table = Table::new(&tabulation.bytes).expect("the table was checked when it was made");
     let unit = Unit::of(table.limits().drive);
     for (number, branch) in rest.branches.iter().enumerate() {
@@ -81,15 +85,15 @@ fn summarise(tabulation: &Tabulation) {
             _ => "hilltop",
         };
         println!("branch {number}  {kind:7}  {from} to {to}");
-        for stretch in tabulation
-            .stretches
-            .iter()
-            .filter(|s| usize::from(s.branch) == number)
+        for ([from, to], limits) in tabulation
+            .usable
+            .any_payload(number, corners.payloads_kg.len())
         {
+            let [below, above] = limits.map(|limit| limit_in_words(tabulation, &limit));
             println!(
-                "          usable   {} to {}",
-                unit.of_value(stretch.from),
-                unit.of_value(stretch.to)
+                "          usable   {} ({below}) to {} ({above})",
+                unit.of_value(from as f32),
+                unit.of_value(to as f32)
             );
         }
     }
@@ -125,8 +129,18 @@ fn summarise(tabulation: &Tabulation) {
     println!("  restoring   {:.2e} N m/rad", worst.restoring_n_m_per_rad);
 }
 
+/// The requirement that ends a usable stretch, with its limit.
+fn limit_in_words(tabulation: &Tabulation, limit: &EndLimit) -> String {
+    let Some(kind) = limit.kind else {
+        return "end of range".to_string();
+    };
+    let drive = &tabulation.arm.drive;
+    let (name, unit) = kind.key_and_unit(drive);
+    format!("{name} {:.4} {unit}", kind.as_typed(drive, limit.limit))
+}
+
 fn end_in_words(tabulation: &Tabulation, branch: &Branch, end: usize, unit: Unit) -> String {
-    let rod = &tabulation.rest.rod;
+    let rod = &tabulation.corners.nominal.rod;
     let [lo, hi] = rod.setpoints;
     let (at, kind) = if end == 0 {
         (branch.from(), branch.from_end)

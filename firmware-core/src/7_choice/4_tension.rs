@@ -4,6 +4,7 @@ use core::fmt;
 
 use serde::Serialize;
 
+use crate::format::UNBOUNDED;
 use crate::table::Limits;
 use crate::words::Word::{F, T};
 use crate::words::Words;
@@ -32,6 +33,20 @@ impl TensionPair {
                 a_n: limits.pretension_n,
                 b_n: pulling_n,
             }
+        }
+    }
+
+    /// The couple that the tendons can make, up to the maximum tension with the part kept back for interpolation, over
+    /// a couple to be held (N m). At least 1 where [`Self::allowed`] allows it, up to rounding;
+    /// [`UNBOUNDED`](crate::UNBOUNDED) without a couple.
+    pub fn factor(couple_n_m: f32, limits: &Limits) -> f32 {
+        let spare_n = limits.max_tension_n - limits.pretension_n - limits.deducted_tension_n;
+        let factor = spare_n * limits.offset_m / couple_n_m.abs();
+        // 0 / 0 too: nothing is needed.
+        if factor < UNBOUNDED || spare_n < 0.0 {
+            factor
+        } else {
+            UNBOUNDED
         }
     }
 

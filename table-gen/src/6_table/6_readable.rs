@@ -83,6 +83,7 @@ impl<'a> Readable<'a> {
                 stretches: slice
                     .branches()
                     .flat_map(|branch| slice.stretches(branch.number))
+                    .map(|usable| usable.entry)
                     .collect(),
             })
             .collect();

@@ -1,8 +1,9 @@
 //! Knots of a branch: the quantities of the table, their slopes, and as many knots as the accuracy needs.
 
+use super::labels::Numbered;
 use super::parameter::ExactMap;
 use crate::rest_states::RestStates;
-use crate::rest_states::curve::{Branch, BranchEnd, RestPoint, Solver};
+use crate::rest_states::curve::{Branch, RestPoint, Solver};
 use crate::rod::Held;
 use firmware_core::BranchEntry;
 
@@ -35,16 +36,20 @@ pub(super) struct Knot {
 pub(super) struct Sampler<'a> {
     rest: &'a RestStates,
     branch: &'a Branch,
+    numbered: Numbered,
     map: ExactMap,
     solver: Solver<'a>,
 }
 
 impl<'a> Sampler<'a> {
-    pub(super) fn new(rest: &'a RestStates, branch: &'a Branch) -> Self {
+    /// For the part of a branch that `numbered` names.
+    pub(super) fn new(rest: &'a RestStates, numbered: Numbered) -> Self {
+        let branch = &rest.branches[numbered.branch];
         let map = ExactMap::new(&rest.rod, branch);
         Self {
             rest,
             branch,
+            numbered,
             map,
             solver: Solver::new(&rest.modal),
         }
@@ -54,21 +59,19 @@ impl<'a> Sampler<'a> {
         &self.map
     }
 
-    /// Setpoints covered within the table's range, SI.
-    pub(super) fn cover(&self) -> [f64; 2] {
-        let rod = &self.rest.rod;
-        let from = self.branch.from().max(rod.setpoints[0]);
-        let to = self.branch.to().min(rod.setpoints[1]);
-        [from, to].map(|s| rod.setpoint_si(s))
+    /// Its number in the table.
+    pub(super) fn number(&self) -> usize {
+        self.numbered.number
     }
 
-    /// Whether the cover ends in a fold, below and above.
-    pub(super) fn ends_in_fold(&self) -> [bool; 2] {
-        let [lo, hi] = self.rest.rod.setpoints;
-        [
-            self.branch.from_end == BranchEnd::Fold && self.branch.from() > lo,
-            self.branch.to_end == BranchEnd::Fold && self.branch.to() < hi,
-        ]
+    /// Its position among the slice's own branches.
+    pub(super) fn branch(&self) -> usize {
+        self.numbered.branch
+    }
+
+    /// Setpoints covered, SI.
+    pub(super) fn cover(&self) -> [f64; 2] {
+        self.numbered.cover
     }
 
     /// The rest state at `setpoint` (SI), which is taken as the branch's end when rounding puts it beyond.
@@ -162,6 +165,7 @@ impl<'a> Sampler<'a> {
         let map = self.map.stored();
         let [from, to] = self.cover().map(|setpoint| setpoint as f32);
         let entry = BranchEntry {
+            number: self.numbered.number as u8,
             index: self.branch.index as u8,
             from,
             to,

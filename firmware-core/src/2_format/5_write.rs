@@ -23,10 +23,10 @@ pub struct Contents<'a> {
 pub struct SliceContents<'a> {
     /// Payload at the tip (kg).
     pub payload_kg: f32,
-    /// The branches, at most 255; the passes among the first 32.
+    /// The branches, numbers increasing.
     pub branches: &'a [BranchContents<'a>],
     /// The stretches, at most 255, sorted by branch and setpoint.
-    pub stretches: &'a [Stretch],
+    pub stretches: &'a [StretchContents<'a>],
 }
 
 /// One branch.
@@ -36,6 +36,16 @@ pub struct BranchContents<'a> {
     pub entry: BranchEntry,
     /// Its knots, `entry.knots` times `entry.floats_per_knot()` values in the order of the format.
     pub knots: &'a [f32],
+}
+
+/// One stretch.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct StretchContents<'a> {
+    /// Its entry in the directory.
+    pub entry: Stretch,
+    /// Its reserves, [`Stretch::reserve_values`] values: at each point in the order of [`super::Reserves`],
+    /// [`super::UNBOUNDED`] where there is no bound.
+    pub reserves: &'a [f32],
 }
 
 /// The part of a table that a [`WriteError`] speaks of.
@@ -76,8 +86,19 @@ pub enum WriteError {
     KnotValues {
         /// Number of the slice.
         slice: usize,
-        /// Number of the branch in the slice.
+        /// The branch, counted in the slice.
         branch: usize,
+        /// Values that the entry asks for.
+        expected: usize,
+        /// Values that are there.
+        found: usize,
+    },
+    /// The number of reserve values does not match the entry of the stretch.
+    ReserveValues {
+        /// Number of the slice.
+        slice: usize,
+        /// The stretch, counted in the slice.
+        stretch: usize,
         /// Values that the entry asks for.
         expected: usize,
         /// Values that are there.
@@ -90,13 +111,16 @@ pub fn buffer_len(contents: &Contents<'_>) -> usize {
     // Upper bounds of postcard records: every varint at its longest, every other field at its fixed width.
     const HEADER: usize = 160;
     const SLICE: usize = 6;
-    const BRANCH: usize = 27;
+    const BRANCH: usize = 28;
     const STRETCH: usize = 29;
     let mut len = PREFIX_LEN + HEADER + contents.header.name.len() + CRC_LEN;
     for slice in contents.slices {
         len += SLICE + slice.branches.len() * BRANCH + slice.stretches.len() * STRETCH;
         for branch in slice.branches {
             len += branch.knots.len() * 4;
+        }
+        for stretch in slice.stretches {
+            len += stretch.reserves.len() * 4;
         }
     }
     len
@@ -121,7 +145,7 @@ pub fn write(contents: &Contents<'_>, out: &mut [u8]) -> Result<usize, WriteErro
     }
     let directory_end = sink.used;
     for (number, slice) in contents.slices.iter().enumerate() {
-        knots(&mut sink, number, slice)?;
+        values(&mut sink, number, slice)?;
     }
     let knots_end = sink.used;
     let total = count(Part::Total, knots_end + CRC_LEN, u32::MAX as usize)?;
@@ -153,12 +177,13 @@ fn directory(sink: &mut Sink<'_>, slice: &SliceContents<'_>) -> Result<(), Write
         sink.record(&branch.entry)?;
     }
     for stretch in slice.stretches {
-        sink.record(stretch)?;
+        sink.record(&stretch.entry)?;
     }
     Ok(())
 }
 
-fn knots(sink: &mut Sink<'_>, number: usize, slice: &SliceContents<'_>) -> Result<(), WriteError> {
+/// The knots of a slice, then its reserves.
+fn values(sink: &mut Sink<'_>, number: usize, slice: &SliceContents<'_>) -> Result<(), WriteError> {
     for (branch, contents) in slice.branches.iter().enumerate() {
         let expected = usize::from(contents.entry.knots) * contents.entry.floats_per_knot();
         if contents.knots.len() != expected {
@@ -169,11 +194,19 @@ fn knots(sink: &mut Sink<'_>, number: usize, slice: &SliceContents<'_>) -> Resul
                 found: contents.knots.len(),
             });
         }
-        for value in contents.knots {
-            let at = sink.used;
-            sink.put(at, &value.to_le_bytes())?;
-            sink.used = at + 4;
+        sink.floats(contents.knots)?;
+    }
+    for (stretch, contents) in slice.stretches.iter().enumerate() {
+        let expected = contents.entry.reserve_values();
+        if contents.reserves.len() != expected {
+            return Err(WriteError::ReserveValues {
+                slice: number,
+                stretch,
+                expected,
+                found: contents.reserves.len(),
+            });
         }
+        sink.floats(contents.reserves)?;
     }
     Ok(())
 }
@@ -200,6 +233,14 @@ impl Sink<'_> {
         let free = self.out.get_mut(self.used..).ok_or(full)?;
         let written = postcard::to_slice(record, free).map_err(|_| full)?;
         self.used += written.len();
+        Ok(())
+    }
+
+    fn floats(&mut self, values: &[f32]) -> Result<(), WriteError> {
+        for value in values {
+            self.put(self.used, &value.to_le_bytes())?;
+            self.used += 4;
+        }
         Ok(())
     }
 
@@ -248,6 +289,21 @@ impl fmt::Display for WriteError {
                 T(": "),
                 N(found as u32),
                 T(" knot values where its entry asks for "),
+                N(expected as u32),
+            ]),
+            Self::ReserveValues {
+                slice,
+                stretch,
+                expected,
+                found,
+            } => f.say(&[
+                T("slice "),
+                N(slice as u32),
+                T(", stretch "),
+                N(stretch as u32),
+                T(": "),
+                N(found as u32),
+                T(" reserve values where its entry asks for "),
                 N(expected as u32),
             ]),
         }

@@ -5,7 +5,7 @@ use core::fmt;
 use serde::Serialize;
 
 use super::TensionPair;
-use crate::format::Limit;
+use crate::format::{Limit, Reserves};
 use crate::words::Word::{F, N, T};
 use crate::words::Words;
 
@@ -19,13 +19,17 @@ pub enum Answer {
         setpoint: f32,
         /// The tensions to command.
         tensions: TensionPair,
+        /// Worst-case reserves there.
+        reserves: Reserves,
     },
-    /// Nothing safe is nearer to the request than this.
+    /// Nothing safe that can be reached without leaving safe setpoints is nearer to the request than this.
     OnlyAsFarAs {
         /// The setpoint to command.
         setpoint: f32,
         /// The tensions to command.
         tensions: TensionPair,
+        /// Worst-case reserves there.
+        reserves: Reserves,
         /// What forbids going further.
         why: Limit,
     },
@@ -37,6 +41,8 @@ pub enum Answer {
         as_far_as: f32,
         /// The tensions that hold it there.
         tensions: TensionPair,
+        /// Worst-case reserves there.
+        reserves: Reserves,
         /// What forbids going further on the present branch.
         why: Limit,
     },
@@ -63,12 +69,10 @@ pub enum Refusal {
         /// Which.
         which: Input,
     },
-    /// The present branch is not in the table.
+    /// The present branch is not in the table, not with this load.
     NoSuchBranch {
         /// Its number.
         branch: u8,
-        /// Number of branches; they count from 0.
-        branches: u8,
     },
     /// The present branch is unstable: nothing can rest there.
     UnstableBranch {
@@ -77,7 +81,7 @@ pub enum Refusal {
         /// Its Morse index.
         index: u8,
     },
-    /// The present branch does not reach the present setpoint.
+    /// The present branch does not reach the present setpoint, in no slice of the load.
     PresentOutsideBranch {
         /// The present setpoint.
         setpoint: f32,
@@ -107,7 +111,9 @@ pub enum Refusal {
 impl fmt::Display for Answer {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match *self {
-            Self::Go { setpoint, tensions } => {
+            Self::Go {
+                setpoint, tensions, ..
+            } => {
                 f.say(&[T("go to setpoint "), F(setpoint), T(": ")])?;
                 fmt::Display::fmt(&tensions, f)
             }
@@ -115,6 +121,7 @@ impl fmt::Display for Answer {
                 setpoint,
                 tensions,
                 why,
+                ..
             } => {
                 f.say(&[T("go only as far as setpoint "), F(setpoint), T(" (")])?;
                 fmt::Display::fmt(&why, f)?;
@@ -126,6 +133,7 @@ impl fmt::Display for Answer {
                 as_far_as,
                 tensions,
                 why,
+                ..
             } => {
                 f.say(&[
                     T("not on this side: the request is safe on branch "),
@@ -156,12 +164,10 @@ impl fmt::Display for Refusal {
                 }),
                 T(" is not a finite number; check where it comes from"),
             ]),
-            Self::NoSuchBranch { branch, branches } => f.say(&[
+            Self::NoSuchBranch { branch } => f.say(&[
                 T("there is no branch "),
                 N(branch.into()),
-                T("; the table has "),
-                N(branches.into()),
-                T(" of them, counted from 0"),
+                T(" with this payload; find the branch from the measured pose"),
             ]),
             Self::UnstableBranch { branch, index } => f.say(&[
                 T("branch "),

@@ -3,11 +3,16 @@
 //! At one setpoint the wells are told apart by the mean angle: the passes between two neighbouring wells mark where
 //! one ends and the other begins. Beyond all the passes on one side the pose belongs to the well on that side; between
 //! passes, or where the table knows of no pass, nobody can tell from the pose alone.
+//!
+//! With several slices to be respected each is asked: those that can tell must agree.
 
 use core::fmt;
 
 use serde::Serialize;
 
+use crate::format::smaller;
+use crate::load::Load;
+use crate::lookup::RestState;
 use crate::table::Slice;
 use crate::words::Word::{F, N, T};
 use crate::words::Words;
@@ -26,12 +31,13 @@ pub struct Pose {
 pub struct Seat {
     /// The stable branch.
     pub branch: u8,
-    /// Measured minus rest mean angle (rad).
+    /// Measured minus rest mean angle (rad), the rest state being that of [`Load::state`], or where it has none that of
+    /// the first slice which knows the branch here.
     pub off_rad: f32,
     /// Measured minus rest tip angle (rad).
     pub tip_off_rad: f32,
-    /// Distance in mean angle to the nearest pass out of the well (rad), >= 0; `None` when there is no pass at this
-    /// setpoint.
+    /// Distance in mean angle to the nearest pass out of the well (rad), >= 0, in the worst of the slices; `None` when
+    /// none has a pass at this setpoint.
     pub to_pass_rad: Option<f32>,
 }
 
@@ -54,7 +60,8 @@ pub enum PoseError {
         /// The setpoint.
         setpoint: f32,
     },
-    /// The pose may belong to either of two wells.
+    /// The pose may belong to either of two wells: it is too near a pass between them, or means the one with one
+    /// payload and the other with another.
     Unclear {
         /// The measured mean angle (rad).
         mean_angle_rad: f32,
@@ -68,15 +75,66 @@ pub enum PoseError {
 /// The branch that `pose` belongs to while the drive is at `setpoint` (rad or N m).
 ///
 /// With a single stable rest state it is that one. Otherwise the passes between the nearest wells below and above the
-/// measured mean angle decide; nearer to a pass than the table's worst interpolation error is too near to tell.
+/// measured mean angle decide; nearer to a pass than the table's worst interpolation error is too near to tell. All
+/// slices of the load that can tell must agree.
 ///
 /// # Errors
-/// [`PoseError`] when an input is not finite, the table has nothing at the setpoint, or the pose is unclear.
-pub fn which_branch(slice: &Slice<'_>, setpoint: f32, pose: Pose) -> Result<Seat, PoseError> {
+/// [`PoseError`] when an input is not finite, no slice has anything at the setpoint, or the pose is unclear.
+pub fn which_branch(load: &Load<'_>, setpoint: f32, pose: Pose) -> Result<Seat, PoseError> {
     let measured = pose.mean_angle_rad;
     if !(setpoint.is_finite() && measured.is_finite() && pose.tip_angle_rad.is_finite()) {
         return Err(PoseError::NotFinite);
     }
+    let mut told: Option<Told> = None;
+    let mut why_not = PoseError::NoStable { setpoint };
+    for (number, slice) in load.slices().enumerate() {
+        match in_slice(&slice, setpoint, measured) {
+            Ok(found) => match &mut told {
+                None => told = Some(found),
+                Some(before) if before.rest.branch == found.rest.branch => {
+                    before.to_pass_rad = smaller(before.to_pass_rad, found.to_pass_rad);
+                }
+                Some(before) => return Err(between(&before.rest, &found.rest, measured)),
+            },
+            // Of several reasons the one most worth hearing.
+            Err(error) if number == 0 || matches!(error, PoseError::Unclear { .. }) => {
+                why_not = error;
+            }
+            Err(_) => {}
+        }
+    }
+    let told = told.ok_or(why_not)?;
+    let rest = load.state(told.rest.branch, setpoint).unwrap_or(told.rest);
+    Ok(Seat {
+        branch: rest.branch,
+        off_rad: measured - rest.mean_angle_rad,
+        tip_off_rad: pose.tip_angle_rad - rest.tip_angle_rad,
+        to_pass_rad: told.to_pass_rad,
+    })
+}
+
+/// Two slices disagree.
+fn between(one: &RestState, other: &RestState, measured: f32) -> PoseError {
+    let (lower, upper) = if one.mean_angle_rad <= other.mean_angle_rad {
+        (one, other)
+    } else {
+        (other, one)
+    };
+    PoseError::Unclear {
+        mean_angle_rad: measured,
+        lower: Some(lower.branch),
+        upper: Some(upper.branch),
+    }
+}
+
+/// What one slice makes of a pose.
+struct Told {
+    /// The rest state it belongs to.
+    rest: RestState,
+    to_pass_rad: Option<f32>,
+}
+
+fn in_slice(slice: &Slice<'_>, setpoint: f32, measured: f32) -> Result<Told, PoseError> {
     let wells = Wells::around(slice, setpoint, measured);
     match (wells.states, wells.stable, wells.lower, wells.upper) {
         (0, ..) => {
@@ -89,7 +147,7 @@ pub fn which_branch(slice: &Slice<'_>, setpoint: f32, pose: Pose) -> Result<Seat
         }
         (_, 0, ..) | (_, _, None, None) => Err(PoseError::NoStable { setpoint }),
         (_, 1, Some(only), None) | (_, 1, None, Some(only)) => {
-            seat(slice, setpoint, pose, only.branch)
+            tell(slice, setpoint, measured, only.branch)
         }
         (_, _, lower, upper) => {
             let branch = decide(slice, setpoint, measured, lower, upper);
@@ -98,7 +156,7 @@ pub fn which_branch(slice: &Slice<'_>, setpoint: f32, pose: Pose) -> Result<Seat
                 lower: lower.map(|well| well.branch),
                 upper: upper.map(|well| well.branch),
             };
-            seat(slice, setpoint, pose, branch.ok_or(unclear)?)
+            tell(slice, setpoint, measured, branch.ok_or(unclear)?)
         }
     }
 }
@@ -187,25 +245,18 @@ fn decide(
     }
 }
 
-fn seat(slice: &Slice<'_>, setpoint: f32, pose: Pose, number: u8) -> Result<Seat, PoseError> {
+fn tell(slice: &Slice<'_>, setpoint: f32, measured: f32, number: u8) -> Result<Told, PoseError> {
     let no_stable = PoseError::NoStable { setpoint };
     let branch = slice.branch(number).ok_or(no_stable)?;
     let rest = branch.state(slice.limits(), setpoint).ok_or(no_stable)?;
     let mut to_pass_rad: Option<f32> = None;
     for pass in slice.exits(&branch) {
         if let Some(state) = pass.state(slice.limits(), setpoint) {
-            let distance = (state.mean_angle_rad - pose.mean_angle_rad).abs();
-            if to_pass_rad.is_none_or(|least| distance < least) {
-                to_pass_rad = Some(distance);
-            }
+            let distance = (state.mean_angle_rad - measured).abs();
+            to_pass_rad = smaller(to_pass_rad, Some(distance));
         }
     }
-    Ok(Seat {
-        branch: number,
-        off_rad: pose.mean_angle_rad - rest.mean_angle_rad,
-        tip_off_rad: pose.tip_angle_rad - rest.tip_angle_rad,
-        to_pass_rad,
-    })
+    Ok(Told { rest, to_pass_rad })
 }
 
 impl fmt::Display for PoseError {
@@ -235,7 +286,7 @@ impl fmt::Display for PoseError {
                 f.say(&[
                     T("the mean angle "),
                     F(mean_angle_rad),
-                    T(" rad is too near a pass to tell its side"),
+                    T(" rad does not tell the branch"),
                 ])?;
                 match (lower, upper) {
                     (Some(lower), Some(upper)) => f.say(&[

@@ -1,12 +1,12 @@
 //! The firmware's answers against fresh solves of the rod, between all knots.
 
-use super::TabulationError;
-use super::knots::{Knot, QUANTITIES, Quantities, Sampler, UNSTABLE_QUANTITIES};
+use super::knots::{QUANTITIES, Quantities, UNSTABLE_QUANTITIES};
+use super::{SliceTable, TabulationError};
 use crate::rest_states::curve::Solver;
 use crate::rest_states::wells::wells;
 use crate::rest_states::{RestStates, RestStatesError};
 use crate::rod::Held;
-use firmware_core::{Drive, RestState, Slice, Table, WorstError};
+use firmware_core::{Drive, RestState, Slice, WorstError};
 
 /// Places tried between two knots.
 const PLACES: usize = 16;
@@ -23,9 +23,8 @@ const NAMES: [&str; QUANTITIES] = [
 ];
 
 /// The worst of all comparisons.
-#[derive(Clone, Copy, Debug)]
+#[derive(Clone, Copy, Debug, Default)]
 pub(super) struct Measured {
-    pub(super) worst: WorstError,
     pub(super) barrier_j: f64,
     pub(super) compared: usize,
     by_quantity: Quantities,
@@ -49,65 +48,69 @@ impl Measured {
         }
         Ok(())
     }
-}
 
-/// Compares at [`PLACES`] places between all neighbouring knots.
-pub(super) fn measure(
-    table: &Table,
-    rest: &RestStates,
-    samplers: &mut [Sampler],
-    knots: &[Vec<Knot>],
-    progress: &mut dyn FnMut(f64),
-) -> Result<Measured, TabulationError> {
-    let slice = table.slices().next().expect("a checked table has a slice");
-    let mut by_quantity = [0.0; QUANTITIES];
-    let (mut barrier_j, mut compared): (f64, usize) = (0.0, 0);
-    for (number, (sampler, knots)) in samplers.iter_mut().zip(knots).enumerate() {
-        progress(number as f64 / rest.branches.len() as f64);
-        let [from, to] = sampler.cover().map(|setpoint| setpoint as f32);
-        for pair in knots.windows(2) {
-            for place in 0..PLACES {
-                let x = (place as f64 + 0.5) / PLACES as f64;
-                let setpoint = sampler
-                    .map()
-                    .setpoint(pair[0].t() + x * (pair[1].t() - pair[0].t()))
-                    as f32;
-                let setpoint = setpoint.clamp(from, to);
-                let lost = RestStatesError::CurveLost {
-                    setpoint: f64::from(setpoint),
-                };
-                let answer = slice.at(number as u8, setpoint).map_err(|_| lost)?;
-                let truth = sampler.quantities(f64::from(setpoint)).ok_or(lost)?;
-                for (worst, error) in by_quantity.iter_mut().zip(errors(&slice, &answer, &truth)) {
-                    *worst = error.max(*worst);
-                }
-                if answer.index == 0 && place % BARRIER_EVERY == 1 {
-                    barrier_j = barrier_j.max(barrier_error(rest, &answer, setpoint)?);
-                }
-                compared += 1;
-            }
+    /// As the header has it, rounded up.
+    pub(super) fn worst(&self, held: Held) -> WorstError {
+        let [
+            mean_angle_rad,
+            conjugate,
+            energy_j,
+            tip_x,
+            tip_y,
+            restoring_n_m_per_rad,
+        ] = self.by_quantity.map(|error| (error as f32).next_up());
+        let (tip_angle_rad, couple_n_m) = match held {
+            Held::TipAngle => (0.0, conjugate),
+            Held::TipCouple => (conjugate, 0.0),
+        };
+        WorstError {
+            mean_angle_rad,
+            tip_angle_rad,
+            couple_n_m,
+            energy_j,
+            tip_m: tip_x.max(tip_y),
+            restoring_n_m_per_rad,
         }
     }
-    let [mean_angle, conjugate, energy, tip_x, tip_y, restoring] =
-        by_quantity.map(|error| (error as f32).next_up());
-    let (tip_angle_rad, couple_n_m) = match rest.rod.held {
-        Held::TipAngle => (0.0, conjugate),
-        Held::TipCouple => (conjugate, 0.0),
-    };
-    let worst = WorstError {
-        mean_angle_rad: mean_angle,
-        tip_angle_rad,
-        couple_n_m,
-        energy_j: energy,
-        tip_m: tip_x.max(tip_y),
-        restoring_n_m_per_rad: restoring,
-    };
-    Ok(Measured {
-        worst,
-        barrier_j,
-        compared,
-        by_quantity,
-    })
+
+    /// Compares one slice at [`PLACES`] places between all neighbouring knots.
+    pub(super) fn slice(
+        &mut self,
+        slice: &Slice,
+        table: &mut SliceTable,
+    ) -> Result<(), RestStatesError> {
+        let rest = table.rest;
+        for (sampler, knots) in table.samplers.iter_mut().zip(&table.knots) {
+            let [from, to] = sampler.cover().map(|setpoint| setpoint as f32);
+            for pair in knots.windows(2) {
+                for place in 0..PLACES {
+                    let x = (place as f64 + 0.5) / PLACES as f64;
+                    let t = pair[0].t() + x * (pair[1].t() - pair[0].t());
+                    let setpoint = (sampler.map().setpoint(t) as f32).clamp(from, to);
+                    let lost = RestStatesError::CurveLost {
+                        setpoint: f64::from(setpoint),
+                    };
+                    let answer = slice
+                        .at(sampler.number() as u8, setpoint)
+                        .map_err(|_| lost)?;
+                    let truth = sampler.quantities(f64::from(setpoint)).ok_or(lost)?;
+                    for (worst, error) in self
+                        .by_quantity
+                        .iter_mut()
+                        .zip(errors(slice, &answer, &truth))
+                    {
+                        *worst = error.max(*worst);
+                    }
+                    if answer.index == 0 && place % BARRIER_EVERY == 1 {
+                        let error = barrier_error(rest, &answer, sampler.branch(), setpoint)?;
+                        self.barrier_j = self.barrier_j.max(error);
+                    }
+                    self.compared += 1;
+                }
+            }
+        }
+        Ok(())
+    }
 }
 
 /// Differences in the order of the table's quantities; zero for those that an unstable branch does not keep.
@@ -132,6 +135,7 @@ fn errors(slice: &Slice, answer: &RestState, truth: &Quantities) -> Quantities {
 fn barrier_error(
     rest: &RestStates,
     answer: &RestState,
+    branch: usize,
     setpoint: f32,
 ) -> Result<f64, RestStatesError> {
     let setpoint = f64::from(setpoint);
@@ -142,7 +146,7 @@ fn barrier_error(
         wells(&rest.modal, &points).map_err(|_| RestStatesError::PassWithoutWells { setpoint })?;
     let truth = numbers
         .iter()
-        .position(|&number| number == usize::from(answer.branch))
+        .position(|&number| number == branch)
         .and_then(|place| wells.barrier[place])
         .map(|barrier| barrier * rest.rod.energy_scale_j);
     let found = answer.well.and_then(|well| well.barrier_j).map(f64::from);
