@@ -28,8 +28,14 @@ struct Claim {
     to: f64,
 }
 
-/// All branches of the slice whose own arm is `corners.arms[arm]`, by number.
-pub(super) fn numbered(corners: &Corners, usable: &Usable, arm: usize) -> Vec<Numbered> {
+/// All branches of the slice whose own arm is `corners.arms[arm]`, by number. `spare` is the first number no slice has used: a
+/// number stands for one branch throughout the table.
+pub(super) fn numbered(
+    corners: &Corners,
+    usable: &Usable,
+    arm: usize,
+    spare: &mut usize,
+) -> Vec<Numbered> {
     let claims = claims(usable, arm, corners.arms[arm].slice);
     let rest = &corners.arms[arm].rest;
     let nominal = &corners.nominal;
@@ -38,7 +44,10 @@ pub(super) fn numbered(corners: &Corners, usable: &Usable, arm: usize) -> Vec<Nu
     };
     let same_pattern = pattern(&rest.branches) == pattern(&nominal.branches)
         && claims.iter().all(|claim| claim.branch == claim.label);
-    let mut spare = nominal.branches.len();
+    let mut unused = || {
+        *spare += 1;
+        *spare - 1
+    };
     let mut found: Vec<Numbered> = Vec::new();
     for (position, branch) in rest.branches.iter().enumerate() {
         let [lo, hi] = rest.rod.setpoints;
@@ -50,8 +59,7 @@ pub(super) fn numbered(corners: &Corners, usable: &Usable, arm: usize) -> Vec<Nu
             .collect();
         own.sort_by(|a, b| a.from.total_cmp(&b.from));
         if same_pattern || own.is_empty() {
-            let number = if same_pattern { position } else { spare };
-            spare += usize::from(!same_pattern);
+            let number = if same_pattern { position } else { unused() };
             found.push(Numbered {
                 number,
                 branch: position,
@@ -67,8 +75,7 @@ pub(super) fn numbered(corners: &Corners, usable: &Usable, arm: usize) -> Vec<Nu
             let high = own.get(place + 1).map_or(to, |after| cut(claim, after));
             // A nominal branch that arrives on two branches keeps its number on the first.
             let taken = found.iter().any(|n| n.number == claim.label);
-            let number = if taken { spare } else { claim.label };
-            spare += usize::from(taken);
+            let number = if taken { unused() } else { claim.label };
             found.push(Numbered {
                 number,
                 branch: position,

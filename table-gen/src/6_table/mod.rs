@@ -124,8 +124,9 @@ pub fn tabulate(arm: &Arm, progress: &(dyn Fn(f64) + Sync)) -> Result<Tabulation
     })?;
     let rod = &corners.nominal.rod;
     let allowed = allowed_errors(arm, rod);
+    let mut spare = corners.nominal.branches.len();
     let mut slices = (0..corners.payloads_kg.len())
-        .map(|slice| SliceTable::new(&corners, &usable, slice, &allowed))
+        .map(|slice| SliceTable::new(&corners, &usable, slice, &allowed, &mut spare))
         .collect::<Result<Vec<_>, TabulationError>>()?;
     progress(SHARES[0] + SHARES[1] + 0.5 * SHARES[2]);
 
@@ -180,6 +181,7 @@ impl<'a> SliceTable<'a> {
         usable: &Usable,
         slice: usize,
         allowed: &Quantities,
+        spare: &mut usize,
     ) -> Result<Self, TabulationError> {
         let own = |corner: &CornerArm| {
             corner.slice == slice
@@ -192,7 +194,7 @@ impl<'a> SliceTable<'a> {
             .position(own)
             .expect("every slice has its own arm among the corners");
         let rest = &corners.arms[arm].rest;
-        let numbered = labels::numbered(corners, usable, arm);
+        let numbered = labels::numbered(corners, usable, arm, spare);
         if let Some(beyond) = numbered
             .iter()
             .find(|n| n.number >= usize::from(MOST_BRANCHES))
