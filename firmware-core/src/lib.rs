@@ -39,7 +39,8 @@
 //! 4. `4_lookup.rs`: the rest state of a branch at a setpoint, with one payload;
 //! 5. `5_load.rs`: [`Table::load`], the slices to be respected with a payload, known or not;
 //! 6. `6_pose.rs`: the branch a measured pose belongs to;
-//! 7. `7_choice/`: [`choose`], the answer to a requested setpoint.
+//! 7. `7_choice/`: [`choose`], the answer to a requested setpoint;
+//! 8. `8_supervisor/`: [`supervisor::step`], the control loop: one call per tick that holds, notices, swings over or stops.
 
 #[path = "1_bytes.rs"]
 mod bytes;
@@ -53,6 +54,8 @@ pub mod load;
 pub mod lookup;
 #[path = "6_pose.rs"]
 pub mod pose;
+#[path = "8_supervisor/mod.rs"]
+pub mod supervisor;
 #[path = "3_table/mod.rs"]
 pub mod table;
 #[path = "1_words.rs"]
@@ -60,8 +63,8 @@ mod words;
 
 pub use choice::{Answer, Input, Present, Refusal, TensionPair, choose};
 pub use format::{
-    BranchEntry, Deducted, Drive, Header, Limit, ParameterMap, Requirement, Reserves, SliceEntry,
-    Stretch, UNBOUNDED, Units, WorstError,
+    BranchEntry, Crossing, Deducted, Drive, Header, Limit, Method, ParameterMap, Requirement,
+    Reserves, SliceEntry, Stretch, SurveyBand, UNBOUNDED, Units, WorstError,
 };
 pub use load::{Load, LoadError, Payload};
 pub use lookup::{LookupError, RestState, Well};

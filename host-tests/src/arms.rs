@@ -61,6 +61,12 @@ impl UniformArm {
     }
 }
 
+/// The greenhouse wand of the examples, with all its tolerances and requirements.
+pub fn wand() -> Arm {
+    let file = include_str!("../../examples/greenhouse-wand/arm.toml");
+    parse(file, "greenhouse-wand/arm.toml").unwrap_or_else(|error| panic!("{error}"))
+}
+
 /// An upright arm of 1 m and 1 kg without tolerances, to be changed.
 pub fn plain() -> Arm {
     parse(include_str!("plain_arm.toml"), "plain_arm.toml")

@@ -87,3 +87,24 @@ pub const PRINTED_FOUR_DECIMALS: f64 = 0.5e-4 + 1.3e-4;
 /// Two-coordinate values with three decimals: half a unit of the last; the model itself is solved to
 /// rounding.
 pub const PRINTED_THREE_DECIMALS: f64 = 0.5e-3;
+
+/// Reserves in stiffness and payload against the critical stiffness (fractions). The project's promise.
+pub const RESERVE: f64 = 1e-5;
+
+/// Accuracy asked of arms whose reserves are compared (rad, m g L): the modes that reach it leave a
+/// tenth of [`RESERVE`] in the critical stiffness.
+pub const ASKED_FOR_RESERVES: f64 = 1e-6;
+
+/// Knocks computed from the same effective mass and barrier: rounding.
+pub const ROUNDING: f64 = 1e-12;
+
+/// Effective masses against the cantilever formulas (fraction of the beam's mass). Simpson's rule over
+/// 400 intervals is exact to 1e-10 for polynomials of sixth degree.
+pub const EFFECTIVE_MASS: f64 = 1e-6;
+
+/// Clearance in closed form (m, arms of 1 m): the arm is looked at in 401 points, half a step of 1.25e-3
+/// from the nearest one is further from a disc whose centre is 0.1 m away by 7.8e-6.
+pub const CLEARANCE: f64 = 1e-5;
+
+/// Stored reserves, relative: single precision, twice.
+pub const STORED: f64 = 2.5e-7;

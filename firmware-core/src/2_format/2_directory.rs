@@ -1,10 +1,10 @@
-//! The directory: the slices, their branches, and the stretches that may be commanded.
+//! The directory: the slices, their branches, the stretches that may be commanded; the crossings follow them.
 
 use core::fmt;
 
 use serde::{Deserialize, Serialize};
 
-use super::{ParameterMap, RESERVES};
+use super::{ParameterMap, RESERVES, SurveyBand};
 use crate::words::Word::{F, T};
 use crate::words::Words;
 
@@ -20,6 +20,10 @@ pub struct SliceEntry {
     pub branches: u8,
     /// Stretches that follow the branches.
     pub stretches: u8,
+    /// Crossings that follow the stretches.
+    pub crossings: u8,
+    /// Stiffness for which the crossings were tried.
+    pub survey: SurveyBand,
 }
 
 /// One branch of rest states over the setpoint, with the payload of its slice.

@@ -4,7 +4,8 @@
 //! prefix, 24 bytes   magic "WTHY", version u16, slice count u16, total length u32, header length u16,
 //!                    directory length u16, knots length u32, reserved u32 = 0
 //! header             postcard, [`Header`]
-//! directory          postcard, for each slice a [`SliceEntry`], its [`BranchEntry`]s, its [`Stretch`]es
+//! directory          postcard, for each slice a [`SliceEntry`], its [`BranchEntry`]s, its [`Stretch`]es,
+//!                    its [`Crossing`]s
 //! knots              f32, for each slice its branches' knots, then its stretches' reserves, both in directory order.
 //!                    A knot is t, then (value, d/dt) of each quantity:
 //!                    stable branch    mean angle, conjugate, energy, tip x, tip y, restoring stiffness   13 f32
@@ -17,6 +18,8 @@
 //! Between the points of a stretch reserves are linear in the setpoint. They are worst cases over the tolerances, and
 //! the generator has taken off what the straight lines could overstate.
 
+#[path = "5_crossing.rs"]
+mod crossing;
 #[path = "2_directory.rs"]
 mod directory;
 #[path = "1_header.rs"]
@@ -26,9 +29,10 @@ mod parameter;
 #[path = "4_reserves.rs"]
 mod reserves;
 #[cfg(feature = "write")]
-#[path = "5_write.rs"]
+#[path = "6_write.rs"]
 pub mod write;
 
+pub use crossing::{Crossing, Method, SurveyBand};
 pub use directory::{BranchEntry, Limit, MOST_BRANCHES, Requirement, SliceEntry, Stretch};
 pub use header::{Deducted, Drive, Header, Units, WorstError};
 pub use parameter::ParameterMap;
@@ -40,7 +44,7 @@ use serde::Deserialize;
 /// The first four bytes of every table.
 pub const MAGIC: [u8; 4] = *b"WTHY";
 /// The version of the format that this crate reads and writes. It rises with every change of meaning.
-pub const VERSION: u16 = 2;
+pub const VERSION: u16 = 3;
 /// Length of the prefix in bytes.
 pub const PREFIX_LEN: usize = 24;
 /// Length of the checksum at the end in bytes.

@@ -128,6 +128,24 @@ pub enum Fault {
         /// In what way.
         fault: StretchFault,
     },
+    /// The survey band of a slice is not around 1.
+    SurveyBand {
+        /// The slice.
+        slice: u16,
+        /// Least fraction.
+        lo: f32,
+        /// Largest fraction.
+        hi: f32,
+    },
+    /// A crossing is wrong.
+    Crossing {
+        /// The slice.
+        slice: u16,
+        /// The crossing, counted in the slice.
+        crossing: u8,
+        /// In what way.
+        fault: CrossingFault,
+    },
     /// Values are left after the last reserves.
     KnotsLeftOver {
         /// How many bytes.
@@ -301,6 +319,49 @@ pub enum StretchFault {
         point: u8,
         /// The place in the point.
         place: u8,
+    },
+}
+
+/// What is wrong with a crossing.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum CrossingFault {
+    /// It ends where it begins.
+    SameBranch {
+        /// The branch.
+        branch: u8,
+    },
+    /// The slice has no such branch, or the arm cannot rest on it.
+    NotStable {
+        /// Its number.
+        branch: u8,
+    },
+    /// A value is not finite or outside its range.
+    Value {
+        /// The field.
+        field: &'static str,
+        /// Its value.
+        value: f32,
+    },
+    /// The couples of an applied-couple drive do not swing a tip about.
+    Drive,
+    /// More trials succeeded than were made.
+    Trials {
+        /// Trials that succeeded.
+        successes: u16,
+        /// Trials made.
+        trials: u16,
+    },
+    /// It is allowed although not every trial succeeded.
+    AllowedWithFailures {
+        /// Trials that succeeded.
+        successes: u16,
+        /// Trials made.
+        trials: u16,
+    },
+    /// It is allowed and ends where the arm may not be held.
+    EndsOutsideStretches {
+        /// Where it ends.
+        rest_setpoint: f32,
     },
 }
 

@@ -2,20 +2,24 @@
 //! decode succeed, and if the memory under a table should change all the same, the walks end early.
 
 use crate::bytes::float;
-use crate::format::{BranchEntry, Reserves, SliceEntry, Stretch, take};
+use crate::format::{BranchEntry, Crossing, Reserves, SliceEntry, Stretch, SurveyBand, take};
 
 use super::{Limits, Usable};
 
-/// The arm with one payload: its branches and stretches.
+/// The arm with one payload: its branches, stretches and crossings.
 #[derive(Clone, Copy, Debug)]
 pub struct Slice<'a> {
     /// Payload at the tip (kg).
     pub payload_kg: f32,
+    /// Stiffness for which its crossings were tried.
+    pub survey: SurveyBand,
     limits: Limits,
     branch_count: u8,
     stretch_count: u8,
+    crossing_count: u8,
     branches: &'a [u8],
     stretches: &'a [u8],
+    crossings: &'a [u8],
     knots: &'a [u8],
     reserves: &'a [u8],
 }
@@ -34,6 +38,14 @@ impl<'a> Slice<'a> {
     /// How many stretches there are, of all branches.
     pub const fn stretch_count(&self) -> u8 {
         self.stretch_count
+    }
+
+    /// The planned crossings, in the order of the table.
+    pub const fn crossings(&self) -> Crossings<'a> {
+        Crossings {
+            left: self.crossing_count,
+            directory: self.crossings,
+        }
     }
 
     /// The branches, numbers increasing.
@@ -132,19 +144,26 @@ impl<'a> Iterator for Slices<'a> {
             knots: self.values,
         };
         for _ in walk.by_ref() {}
-        let slice = Slice {
+        let mut slice = Slice {
             payload_kg: entry.payload_kg,
+            survey: entry.survey,
             limits: self.limits,
             branch_count: entry.branches,
             stretch_count: entry.stretches,
+            crossing_count: entry.crossings,
             branches: directory,
             stretches: walk.directory,
+            crossings: &[],
             knots: self.values,
             reserves: walk.knots,
         };
         (self.directory, self.values) = (walk.directory, walk.knots);
         for _ in 0..entry.stretches {
             (_, self.directory, self.values) = stretch(self.directory, self.values)?;
+        }
+        slice.crossings = self.directory;
+        for _ in 0..entry.crossings {
+            (_, self.directory) = take::<Crossing>(self.directory)?;
         }
         Some(slice)
     }
@@ -204,5 +223,23 @@ impl<'a> Iterator for Stretches<'a> {
                 return Some(usable);
             }
         }
+    }
+}
+
+/// The crossings of a slice.
+#[derive(Clone, Debug)]
+pub struct Crossings<'a> {
+    left: u8,
+    directory: &'a [u8],
+}
+
+impl Iterator for Crossings<'_> {
+    type Item = Crossing;
+
+    fn next(&mut self) -> Option<Crossing> {
+        self.left = self.left.checked_sub(1)?;
+        let (crossing, directory) = take::<Crossing>(self.directory)?;
+        self.directory = directory;
+        Some(crossing)
     }
 }

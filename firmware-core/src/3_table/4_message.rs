@@ -2,7 +2,7 @@
 
 use core::fmt;
 
-use super::error::{BranchFault, Fault, Section, StretchFault, TableError};
+use super::error::{BranchFault, CrossingFault, Fault, Section, StretchFault, TableError};
 use crate::format::MOST_BRANCHES;
 use crate::words::Word::{F, N, T, X};
 use crate::words::Words;
@@ -144,6 +144,29 @@ impl fmt::Display for Fault {
                     N(slice.into()),
                     T(", stretch "),
                     N(stretch.into()),
+                    T(": "),
+                ])?;
+                fmt::Display::fmt(&fault, f)
+            }
+            Self::SurveyBand { slice, lo, hi } => f.say(&[
+                T("slice "),
+                N(slice.into()),
+                T(": the survey band "),
+                F(lo),
+                T(" to "),
+                F(hi),
+                T(" should be positive and include 1"),
+            ]),
+            Self::Crossing {
+                slice,
+                crossing,
+                fault,
+            } => {
+                f.say(&[
+                    T("slice "),
+                    N(slice.into()),
+                    T(", crossing "),
+                    N(crossing.into()),
                     T(": "),
                 ])?;
                 fmt::Display::fmt(&fault, f)
@@ -316,6 +339,43 @@ impl fmt::Display for StretchFault {
                 T(" of its reserves at point "),
                 N(point.into()),
                 T(" is not finite, above 1e9, or a negative strain"),
+            ]),
+        }
+    }
+}
+
+impl fmt::Display for CrossingFault {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match *self {
+            Self::SameBranch { branch } => {
+                f.say(&[T("it ends on branch "), N(branch.into()), T(", where it begins")])
+            }
+            Self::NotStable { branch } => f.say(&[
+                T("the arm cannot rest on branch "),
+                N(branch.into()),
+                T(" in this slice"),
+            ]),
+            Self::Value { field, value } => {
+                f.say(&[T(field), T(" = "), F(value), T(" is outside its range")])
+            }
+            Self::Drive => f.say(&[T("only a held tip can be swung over")]),
+            Self::Trials { successes, trials } => f.say(&[
+                N(successes.into()),
+                T(" successes in "),
+                N(trials.into()),
+                T(" trials"),
+            ]),
+            Self::AllowedWithFailures { successes, trials } => f.say(&[
+                T("it is allowed although only "),
+                N(successes.into()),
+                T(" of "),
+                N(trials.into()),
+                T(" trials succeeded"),
+            ]),
+            Self::EndsOutsideStretches { rest_setpoint } => f.say(&[
+                T("it is allowed and ends at setpoint "),
+                F(rest_setpoint),
+                T(", which is in no stretch of its branch"),
             ]),
         }
     }

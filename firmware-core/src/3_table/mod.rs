@@ -11,8 +11,8 @@ mod slice;
 #[path = "5_usable.rs"]
 mod usable;
 
-pub use error::{BranchFault, Fault, Section, StretchFault, TableError};
-pub use slice::{Branch, Branches, Slice, Slices, Stretches};
+pub use error::{BranchFault, CrossingFault, Fault, Section, StretchFault, TableError};
+pub use slice::{Branch, Branches, Crossings, Slice, Slices, Stretches};
 pub use usable::Usable;
 
 use serde::Serialize;

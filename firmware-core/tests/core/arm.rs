@@ -18,8 +18,8 @@ use firmware_core::format::write::{
     BranchContents, Contents, SliceContents, StretchContents, buffer_len, write,
 };
 use firmware_core::{
-    BranchEntry, Deducted, Drive, Header, Limit, Load, ParameterMap, Payload, Requirement,
-    Reserves, Stretch, Table, Units, WorstError,
+    BranchEntry, Crossing, Deducted, Drive, Header, Limit, Load, ParameterMap, Payload, Requirement,
+    Reserves, Stretch, SurveyBand, Table, Units, WorstError,
 };
 
 use crate::parameter::{parameter, setpoint};
@@ -93,6 +93,8 @@ pub struct DraftSlice {
     pub payload_kg: f32,
     pub branches: Vec<(BranchEntry, Vec<f32>)>,
     pub stretches: Vec<(Stretch, Vec<f32>)>,
+    pub survey: SurveyBand,
+    pub crossings: Vec<Crossing>,
 }
 
 impl DraftSlice {
@@ -170,6 +172,8 @@ impl Draft {
                 payload_kg: self.slices[number].payload_kg,
                 branches: &branches[number],
                 stretches: &stretches[number],
+                survey: self.slices[number].survey,
+                crossings: &self.slices[number].crossings,
             })
             .collect();
         let contents = Contents {
@@ -246,6 +250,8 @@ pub fn draft(drive: Drive, max_tension_n: f32) -> Draft {
             payload_kg: NOMINAL_KG,
             branches,
             stretches,
+            survey: SurveyBand::default(),
+            crossings: Vec::new(),
         }],
     }
 }

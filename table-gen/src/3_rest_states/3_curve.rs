@@ -33,6 +33,8 @@ pub struct RestPoint {
     pub setpoint: f64,
     /// Change of the setpoint along the tangent; zero at a fold.
     pub setpoint_rate: f64,
+    /// The same relative to the steepest direction there is, in 0..=1: how far from a fold the curve runs.
+    pub rise: f64,
     /// Morse index: 0 stable, 1 a pass between two wells, more a hilltop.
     pub index: usize,
     /// Potential energy without the drive's work (m g L).
@@ -73,6 +75,11 @@ impl RestPoint {
     }
 }
 
+/// Change of the mean angle along the tangent.
+pub(super) fn mean_angle_rate(point: &RestPoint) -> f64 {
+    mean_angle(&point.tangent)
+}
+
 /// A condition that picks one point of a curve.
 #[derive(Clone, Copy)]
 enum Pick<'a> {
@@ -89,6 +96,8 @@ enum Pick<'a> {
 pub struct Solver<'a> {
     modal: &'a ModalRod,
     at: Evaluation,
+    /// Factor on the steps along curves, at most 1.
+    fineness: f64,
     /// Points solved and classified so far.
     pub solved: usize,
 }
@@ -96,11 +105,22 @@ pub struct Solver<'a> {
 impl<'a> Solver<'a> {
     /// A solver for `modal`.
     pub fn new(modal: &'a ModalRod) -> Self {
+        Self::finer(modal, 1.0)
+    }
+
+    /// A solver that follows curves in steps of `fineness` times the usual length, at most 1.
+    pub fn finer(modal: &'a ModalRod, fineness: f64) -> Self {
         Self {
             modal,
             at: Evaluation::new(modal.modes()),
+            fineness,
             solved: 0,
         }
+    }
+
+    /// The rod whose rest states it solves.
+    pub fn modal(&self) -> &'a ModalRod {
+        self.modal
     }
 
     /// Number of modes.
@@ -186,6 +206,10 @@ impl<'a> Solver<'a> {
             tangent = -tangent;
         }
         self.solved += 1;
+        let steepest = (0..n)
+            .map(|j| self.modal.setpoint_slope(&self.at, j).powi(2))
+            .sum::<f64>()
+            .sqrt();
         let mut energy = self.at.energy;
         let mut couple = self.at.gradient[0];
         for j in 0..n {
@@ -198,6 +222,7 @@ impl<'a> Solver<'a> {
                 Held::TipCouple => couple,
             },
             setpoint_rate: self.setpoint_rate(tangent.as_slice()),
+            rise: self.setpoint_rate(tangent.as_slice()).abs() / steepest,
             index: morse_index(&self.at.hessian, self.modal.first_free()),
             energy,
             couple,
@@ -405,8 +430,8 @@ impl Solver<'_> {
 
     /// Points from `start` along its tangent up to the end of `range` (solved for exactly).
     fn follow_one_way(&mut self, start: RestPoint, range: [f64; 2]) -> Result<Vec<RestPoint>, f64> {
+        let mut step = 0.2 * self.longest_step(&start);
         let mut points = vec![start];
-        let mut step = 0.1 * LONGEST_STEP;
         while points.len() < LONGEST_CURVE {
             let last = &points[points.len() - 1];
             let Some(next) = self.step_along(last, step) else {
@@ -443,9 +468,14 @@ impl Solver<'_> {
                 continue;
             }
             points.push(next);
-            step = (1.5 * step).min(LONGEST_STEP);
+            step = (1.5 * step).min(self.longest_step(&points[points.len() - 1]));
         }
         Err(points[points.len() - 1].setpoint)
+    }
+
+    /// Longest step from or to `point`: short where the curve runs close to a fold, for there two may follow each other.
+    fn longest_step(&self, point: &RestPoint) -> f64 {
+        self.fineness * LONGEST_STEP * (4.0 * point.rise).clamp(0.1, 1.0)
     }
 
     /// One step of length `step`; `None` when it must be shorter: Newton lost, the curve turned too far, or the Morse index
@@ -464,9 +494,10 @@ impl Solver<'_> {
             .zip(&next.tangent)
             .map(|(a, b)| a * b)
             .sum();
+        let short_enough = step <= 1.5 * self.longest_step(&next);
         let passed_fold = (from.setpoint_rate > 0.0) != (next.setpoint_rate > 0.0);
         let consistent = from.index.abs_diff(next.index) == usize::from(passed_fold);
-        (turn > TURN_COSINE && consistent).then_some(next)
+        (turn > TURN_COSINE && consistent && short_enough).then_some(next)
     }
 
     /// Locates the folds of a followed curve and cuts it there.

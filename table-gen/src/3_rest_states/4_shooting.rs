@@ -32,6 +32,10 @@ pub struct Shot {
     pub mean_angle: f64,
     /// Tip couple (m g L).
     pub couple: f64,
+    /// Potential energy without the drive's work (m g L).
+    pub energy: f64,
+    /// Tip position (L).
+    pub tip: [f64; 2],
     /// Morse index by conjugate points.
     pub index: usize,
 }
@@ -50,8 +54,8 @@ pub struct Shooting {
     folds: Vec<Shot>,
 }
 
-/// State of the integration: angle, couple, mean angle, and the first two's derivatives in `v`.
-type State = [f64; 5];
+/// State of the integration: angle, couple, mean angle, the first two's derivatives in `v`, energy, tip x and y.
+type State = [f64; 8];
 
 impl Shooting {
     /// Scans the base curvature over the bound that holds for setpoints within `range` (dimensionless).
@@ -79,13 +83,38 @@ impl Shooting {
         }
         for pair in shots.windows(2) {
             shooting.shots.push(pair[0]);
-            if let Some(fold) = shooting.fold_between(pair[0], pair[1]) {
-                shooting.shots.push(fold);
-                shooting.folds.push(fold);
-            }
+            shooting.find_folds(pair[0], pair[1], FLATTEST_TRIALS);
         }
         shooting.shots.extend(shots.last());
         shooting
+    }
+
+    /// Adds the folds between two shots. Where the slope keeps its sign but comes close to zero between them, the flattest
+    /// place is tried: two folds may lie close together.
+    fn find_folds(&mut self, a: Shot, b: Shot, trials: usize) {
+        let (da, db) = (a.setpoint_slope, b.setpoint_slope);
+        if (da > 0.0) != (db > 0.0) {
+            let fold = self.bracketed(a, b, |shot| shot.setpoint_slope);
+            self.shots.push(fold);
+            self.folds.push(fold);
+            return;
+        }
+        // Slope of the cubic between the shots: a parabola over x in 0..1, flattest at its vertex.
+        let h = b.base_curvature - a.base_curvature;
+        let chord = (b.setpoint - a.setpoint) / h;
+        let (linear, square) = (
+            6.0 * chord - 4.0 * da - 2.0 * db,
+            3.0 * (da + db) - 6.0 * chord,
+        );
+        let x = -0.5 * linear / square;
+        let flattest = da + x * (linear + x * square);
+        let is_suspect = flattest * da < 0.1 * da.abs().min(db.abs()) * da.abs();
+        if trials > 0 && (0.02..=0.98).contains(&x) && is_suspect {
+            let middle = self.shoot(a.base_curvature + x * h);
+            self.find_folds(a, middle, trials - 1);
+            self.shots.push(middle);
+            self.find_folds(middle, b, trials - 1);
+        }
     }
 
     /// Halves the integration steps until halving once more changes a sample of shots by less than `accuracy`.
@@ -121,7 +150,7 @@ impl Shooting {
     /// Integrates the rest conditions from the base with curvature `v`.
     pub fn shoot(&self, v: f64) -> Shot {
         let moment = self.base_stiffness * (v - self.base_rest_curvature);
-        let mut y: State = [0.0, moment, 0.0, 0.0, self.base_stiffness];
+        let mut y: State = [0.0, moment, 0.0, 0.0, self.base_stiffness, 0.0, 0.0, 0.0];
         let mut conjugate_points = 0;
         for step in &self.steps {
             let before = y[3];
@@ -141,6 +170,8 @@ impl Shooting {
             tip_angle: y[0],
             mean_angle: y[2],
             couple: y[1],
+            energy: y[5],
+            tip: [y[6], y[7]],
             index: conjugate_points + usize::from(free_end),
         }
     }
@@ -148,7 +179,7 @@ impl Shooting {
     /// Curvatures `alpha'` at the step ends with their arc lengths, for projecting a shot on modes.
     pub fn curvatures(&self, v: f64) -> Vec<(f64, f64)> {
         let moment = self.base_stiffness * (v - self.base_rest_curvature);
-        let mut y: State = [0.0, moment, 0.0, 0.0, 0.0];
+        let mut y: State = [0.0, moment, 0.0, 0.0, 0.0, 0.0, 0.0, 0.0];
         let mut s = 0.0;
         let mut out = vec![(0.0, v)];
         for step in &self.steps {
@@ -170,6 +201,9 @@ impl Shooting {
                 y[0],
                 y[4] * compliance,
                 -outboard * cos * y[3],
+                0.5 * y[1] * y[1] * compliance + outboard * cos,
+                sin,
+                cos,
             ]
         };
         let moved = |k: &State, h: f64| -> State { std::array::from_fn(|i| y[i] + h * k[i]) };
@@ -198,14 +232,6 @@ impl Shooting {
             self.subdivide(a, middle, depth - 1, out);
             self.subdivide(middle, b, depth - 1, out);
         }
-    }
-
-    /// The extremum of the setpoint between two shots whose slopes differ in sign.
-    fn fold_between(&self, a: Shot, b: Shot) -> Option<Shot> {
-        if (a.setpoint_slope > 0.0) == (b.setpoint_slope > 0.0) {
-            return None;
-        }
-        Some(self.bracketed(a, b, |shot| shot.setpoint_slope))
     }
 
     /// The shot between `a` and `b` at which `f` vanishes, by false position with the Illinois rule.
@@ -261,6 +287,8 @@ impl Shooting {
 const FIRST_GRID: usize = 96;
 /// Halvings of one of them at most.
 const DEEPEST_SUBDIVISION: usize = 24;
+/// Places tried, one inside the other, where two folds may lie close together.
+const FLATTEST_TRIALS: usize = 3;
 /// How well cubic interpolation must foretell the setpoint before an interval counts as resolved (rad or m g L).
 const FORETOLD: f64 = 1e-3;
 

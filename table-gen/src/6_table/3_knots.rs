@@ -3,7 +3,7 @@
 use super::labels::Numbered;
 use super::parameter::ExactMap;
 use crate::rest_states::RestStates;
-use crate::rest_states::curve::{Branch, RestPoint, Solver};
+use crate::rest_states::curve::{Branch, BranchEnd, RestPoint, Solver};
 use crate::rod::Held;
 use firmware_core::BranchEntry;
 
@@ -72,6 +72,19 @@ impl<'a> Sampler<'a> {
     /// Setpoints covered, SI.
     pub(super) fn cover(&self) -> [f64; 2] {
         self.numbered.cover
+    }
+
+    /// Distance of a setpoint (SI) to the nearest fold of its branch; infinite when it has none.
+    pub(super) fn to_fold(&self, setpoint: f64) -> f64 {
+        let rod = &self.rest.rod;
+        let ends = [
+            (self.branch.from_end, self.branch.from()),
+            (self.branch.to_end, self.branch.to()),
+        ];
+        ends.into_iter()
+            .filter(|(end, _)| *end == BranchEnd::Fold)
+            .map(|(_, at)| (setpoint - rod.setpoint_si(at)).abs())
+            .fold(f64::INFINITY, f64::min)
     }
 
     /// The rest state at `setpoint` (SI), which is taken as the branch's end when rounding puts it beyond.

@@ -10,8 +10,8 @@ use firmware_core::{Drive, RestState, Slice, WorstError};
 
 /// Places tried between two knots.
 const PLACES: usize = 16;
-/// Of these, every so many-th also compares the barrier.
-const BARRIER_EVERY: usize = 4;
+/// The worst error lies between the places that are tried; this factor covers what they miss.
+const BETWEEN_PLACES: f64 = 1.03;
 /// Names of the quantities, in the order of the table.
 const NAMES: [&str; QUANTITIES] = [
     "mean angle (rad)",
@@ -87,6 +87,10 @@ impl Measured {
                     let x = (place as f64 + 0.5) / PLACES as f64;
                     let t = pair[0].t() + x * (pair[1].t() - pair[0].t());
                     let setpoint = (sampler.map().setpoint(t) as f32).clamp(from, to);
+                    // Closer to a fold than the fold itself is known, there is nothing to compare.
+                    if sampler.to_fold(f64::from(setpoint)) < rest.fold_uncertainty_si() {
+                        continue;
+                    }
                     let lost = RestStatesError::CurveLost {
                         setpoint: f64::from(setpoint),
                     };
@@ -99,11 +103,11 @@ impl Measured {
                         .iter_mut()
                         .zip(errors(slice, &answer, &truth))
                     {
-                        *worst = error.max(*worst);
+                        *worst = worst.max(BETWEEN_PLACES * error);
                     }
-                    if answer.index == 0 && place % BARRIER_EVERY == 1 {
+                    if answer.index == 0 {
                         let error = barrier_error(rest, &answer, sampler.branch(), setpoint)?;
-                        self.barrier_j = self.barrier_j.max(error);
+                        self.barrier_j = self.barrier_j.max(BETWEEN_PLACES * error);
                     }
                     self.compared += 1;
                 }

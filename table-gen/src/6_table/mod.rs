@@ -25,7 +25,9 @@ use firmware_core::format::MOST_BRANCHES;
 use firmware_core::format::write::{
     BranchContents, Contents, SliceContents, StretchContents, WriteError, buffer_len, write,
 };
-use firmware_core::{BranchEntry, Deducted, Drive, Header, Table, TableError, Units, WorstError};
+use firmware_core::{
+    BranchEntry, Deducted, Drive, Header, SurveyBand, Table, TableError, Units, WorstError,
+};
 use knots::{Knot, Quantities, Sampler};
 use std::fmt;
 use stretches::{StoredStretch, stored_stretch};
@@ -372,6 +374,8 @@ fn assemble(
             payload_kg: made.payload_kg as f32,
             branches,
             stretches,
+            survey: SurveyBand::default(),
+            crossings: &[],
         })
         .collect();
     let contents = Contents {

@@ -3,6 +3,7 @@
 //! The page turns radians into degrees; nothing here is computed again there. Everything is serialised into the page,
 //! so a report holds no clock, path or machine name: the same arm gives the same bytes.
 
+use crate::arm_file::KeepOut;
 use serde::Serialize;
 
 /// Everything one report page shows.
@@ -18,7 +19,20 @@ pub struct ReportData {
     pub frames: Vec<Frame>,
     /// Rest states the two-coordinate model calls stable and the converged rod does not have.
     pub false_friends: Vec<FalseFriend>,
+    /// Where the two-coordinate model differs from the rod, in words.
+    #[serde(skip)]
+    pub disagreements: Vec<Disagreement>,
+    /// The judgement on top of the page; written, not drawn.
+    #[serde(skip)]
+    pub verdict: Verdict,
+    /// Every required reserve over the setpoint.
+    pub reserves: Vec<Reserve>,
+    /// Where which requirement holds, by branch.
+    pub strips: Vec<Strip>,
+    /// Regions where no part of the arm may be.
+    pub keep_out: Vec<KeepOut>,
     /// The short table of limits, in words.
+    #[serde(skip)]
     pub limits: Vec<Limit>,
     /// Worst measured interpolation errors of the table.
     pub worst_errors: Vec<WorstError>,
@@ -172,8 +186,10 @@ pub struct FrameState {
     pub index: usize,
     /// Whether it is stable in the converged rod.
     pub stable: bool,
-    /// Whether the firmware may command it.
+    /// Whether the firmware may command it, whatever the payload.
     pub usable: bool,
+    /// Why it may not, in words: the first requirement that fails.
+    pub why_not: Option<String>,
     /// Orientation averaged along the arm, from the base tangent, rad.
     pub mean_angle_rad: f64,
     /// Orientation of the tip, from the base tangent, rad.
@@ -186,6 +202,114 @@ pub struct FrameState {
     pub barrier_j: Option<f64>,
     /// Centre line from clamp to tip, `[x, y]` in m, clamp at the origin, y up.
     pub shape: Vec<[f64; 2]>,
+    /// The same rest state in the worst corner of the tolerances; none for an unstable one.
+    pub worst: Option<WorstShape>,
+}
+
+/// A rest state in the corner of the tolerances with the least clearance or, without keep-out regions, the largest strain.
+#[derive(Clone, Debug, Serialize)]
+pub struct WorstShape {
+    /// The clearance or strain and the corner, in words.
+    pub words: String,
+    /// Centre line from clamp to tip, `[x, y]` in m.
+    pub shape: Vec<[f64; 2]>,
+}
+
+/// The judgement in words, one screen of it.
+#[derive(Clone, Debug, Default)]
+pub struct Verdict {
+    /// Where the arm may be used.
+    pub summary: String,
+    /// What that holds for: payload range, tolerances.
+    pub holds_for: String,
+    /// Every usable stretch with its ends, or every branch without one.
+    pub stretches: Vec<VerdictStretch>,
+    /// What a stiffer spine and a lighter payload would do.
+    pub helps: Vec<String>,
+}
+
+/// A usable stretch, or a branch without one.
+#[derive(Clone, Debug)]
+pub struct VerdictStretch {
+    /// Number of the branch.
+    pub branch: usize,
+    /// Its setpoints whatever the payload, or "nowhere".
+    pub setpoints: String,
+    /// What limits it: one sentence for each end.
+    pub limits: Vec<String>,
+    /// Setpoints with each payload of the range, where they differ.
+    pub by_payload: Vec<String>,
+}
+
+/// One reserve, worst over all corners, along every stable branch.
+#[derive(Clone, Debug, Serialize)]
+pub struct Reserve {
+    /// Key in the arm file.
+    pub key: String,
+    /// Name for people.
+    pub name: String,
+    /// Unit of values and limit; empty for a plain number.
+    pub unit: String,
+    /// The limit.
+    pub limit: f64,
+    /// Whether more is worse.
+    pub is_upper_limit: bool,
+    /// One curve for each stable branch.
+    pub curves: Vec<ReserveCurve>,
+}
+
+/// A reserve along one branch.
+#[derive(Clone, Debug, Serialize)]
+pub struct ReserveCurve {
+    /// Number of the branch.
+    pub branch: usize,
+    /// Setpoint (rad or N m) and value; none without bound.
+    pub points: Vec<(f64, Option<f64>)>,
+}
+
+/// Where the requirements hold along one stable branch.
+#[derive(Clone, Debug, Serialize)]
+pub struct Strip {
+    /// Number of the branch.
+    pub branch: usize,
+    /// Setpoints of the branch within the range, rad or N m.
+    pub cover: [f64; 2],
+    /// A row for each requirement, all together, and each payload.
+    pub rows: Vec<StripRow>,
+}
+
+/// One row of a strip.
+#[derive(Clone, Debug, Serialize)]
+pub struct StripRow {
+    /// What it shows, for people.
+    pub name: String,
+    /// What kind of row it is.
+    pub kind: RowKind,
+    /// Runs of setpoints where it holds, rad or N m.
+    pub runs: Vec<[f64; 2]>,
+}
+
+/// Kinds of rows.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize)]
+#[serde(rename_all = "kebab-case")]
+pub enum RowKind {
+    /// One requirement, worst over all corners.
+    Requirement,
+    /// All requirements, whatever the payload.
+    All,
+    /// All requirements with one payload.
+    Payload,
+}
+
+/// A run of setpoints where the two-coordinate model is wrong.
+#[derive(Clone, Debug)]
+pub struct Disagreement {
+    /// The rod's branch, or what stands for it.
+    pub branch: String,
+    /// Setpoints, in words.
+    pub setpoints: String,
+    /// What is wrong, in words.
+    pub what: String,
 }
 
 /// A rest state that only the two-coordinate model believes in.

@@ -4,14 +4,17 @@ use super::data::{
     Arm, Branch, BranchPoint, Drive, End, FalseFriend, Fold, Frame, FrameState, Limit, ReportData,
     Stretch, WorstError,
 };
+use super::cross_check::CrossCheck;
+use super::margins::Margins;
+use super::{verdict, words};
 use crate::arm_file;
+use crate::margins::usable::EndLimit;
 use crate::rest_states::confirm::judge;
 use crate::rest_states::curve::{self, BranchEnd, RestPoint, Solver};
 use crate::rest_states::profile::profile;
 use crate::rest_states::wells::{Wells, wells};
 use crate::rest_states::{RestStates, RestStatesError};
 use crate::table::Tabulation;
-use crate::margins::usable::EndLimit;
 use firmware_core::{Table, TensionPair};
 
 /// Positions of the slider.
@@ -27,22 +30,26 @@ const SEGMENTS: usize = 40;
 /// [`RestStatesError`] when a rest state cannot be solved again.
 pub fn gather(tabulation: &Tabulation) -> Result<ReportData, RestStatesError> {
     let rest = &tabulation.corners.nominal;
+    let drive = drive(&tabulation.arm);
     let gatherer = Gatherer {
         tabulation,
         rest,
-        drive: drive(&tabulation.arm),
+        drive,
+        margins: Margins::new(tabulation, drive),
     };
     let branches = (0..rest.branches.len())
         .map(|number| gatherer.branch(number))
         .collect::<Result<Vec<_>, _>>()?;
     let mut frames = Vec::new();
     let mut false_friends = Vec::new();
+    let mut cross_check = CrossCheck::default();
     for k in 0..FRAMES {
         let x = k as f64 / (FRAMES - 1) as f64;
         let at = rest.rod.setpoints[0] * (1.0 - x) + rest.rod.setpoints[1] * x;
-        frames.push(gatherer.frame(at)?);
-        let setpoint = rest.rod.setpoint_si(at);
-        let judged = judge(&rest.rod, &rest.modal, at);
+        let frame = gatherer.frame(at)?;
+        let setpoint = frame.setpoint;
+        let judged = judge(&rest.rod, &rest.modal, rest.rod.setpoint_from_si(setpoint));
+        cross_check.frame(&rest.rod, setpoint, &judged, &frame.states);
         false_friends.extend(
             judged
                 .iter()
@@ -52,6 +59,7 @@ pub fn gather(tabulation: &Tabulation) -> Result<ReportData, RestStatesError> {
                     mean_angle_rad: j.state.mean_angle(),
                 }),
         );
+        frames.push(frame);
     }
     Ok(ReportData {
         arm: gatherer.arm(),
@@ -60,6 +68,11 @@ pub fn gather(tabulation: &Tabulation) -> Result<ReportData, RestStatesError> {
         folds: gatherer.folds(),
         frames,
         false_friends,
+        disagreements: cross_check.in_words(drive),
+        verdict: verdict::verdict(&gatherer.margins)?,
+        reserves: gatherer.margins.reserves(),
+        strips: gatherer.margins.strips(),
+        keep_out: tabulation.arm.keep_out.clone(),
         worst_errors: gatherer.worst_errors(),
         table_bytes: tabulation.bytes.len(),
     })
@@ -76,6 +89,7 @@ struct Gatherer<'a> {
     tabulation: &'a Tabulation,
     rest: &'a RestStates,
     drive: Drive,
+    margins: Margins<'a>,
 }
 
 impl Gatherer<'_> {
@@ -136,7 +150,11 @@ impl Gatherer<'_> {
     fn stretches(&self, number: usize) -> Vec<Stretch> {
         let why = |limit: &EndLimit| match limit.kind {
             None => "end of the setpoint range".to_string(),
-            Some(kind) => kind.key_and_unit(&self.tabulation.arm.drive).0.to_string(),
+            Some(kind) => format!(
+                "{} {}",
+                words::name(kind),
+                words::quantity(kind, self.drive, limit.value)
+            ),
         };
         let slices = self.tabulation.corners.payloads_kg.len();
         let runs = self.tabulation.usable.any_payload(number, slices);
@@ -229,13 +247,23 @@ impl Gatherer<'_> {
                 branch,
                 index: state.index,
                 stable: state.index == 0,
-                usable: self.is_usable(branch, setpoint),
+                usable: state.index == 0 && self.margins.why_not(branch, setpoint).is_none(),
+                why_not: if state.index == 0 {
+                    self.margins.why_not(branch, setpoint)
+                } else {
+                    Some("unstable".to_string())
+                },
                 mean_angle_rad: state.mean_angle(),
                 tip_angle_rad: state.tip_angle(),
                 couple_n_m: state.couple * rod.energy_scale_j,
                 energy_j: state.energy * rod.energy_scale_j,
                 barrier_j: barrier.map(|b| b * rod.energy_scale_j),
                 shape: self.shape(&state.c),
+                worst: if state.index == 0 {
+                    self.margins.worst_shape(branch, state)
+                } else {
+                    None
+                },
             })
             .collect();
         states.sort_by(|a, b| a.mean_angle_rad.total_cmp(&b.mean_angle_rad));
@@ -253,10 +281,6 @@ impl Gatherer<'_> {
             states,
             profile,
         })
-    }
-
-    fn is_usable(&self, branch: usize, setpoint: f64) -> bool {
-        self.stretches(branch).iter().any(|s| (s.from..=s.to).contains(&setpoint))
     }
 
     fn shape(&self, c: &[f64]) -> Vec<[f64; 2]> {
@@ -299,36 +323,7 @@ impl Gatherer<'_> {
     /// The limits in words.
     fn limits(&self, branches: &[Branch]) -> Vec<Limit> {
         let mut limits = Vec::new();
-        let setpoint = |value: f64| match self.drive {
-            Drive::HeldTip => format!("{:.1}°", value.to_degrees()),
-            Drive::AppliedCouple => format!("{value:.3} N m"),
-        };
         let stable: Vec<&Branch> = branches.iter().filter(|b| b.stable).collect();
-        for branch in &stable {
-            let parts: Vec<String> = branch
-                .stretches
-                .iter()
-                .map(|s| format!("{} to {}", setpoint(s.from), setpoint(s.to)))
-                .collect();
-            let ends: Vec<String> = branch
-                .stretches
-                .iter()
-                .map(|s| format!("below: {}; above: {}", s.from_why, s.to_why))
-                .collect();
-            limits.push(Limit {
-                what: format!("Usable setpoints on branch {}", branch.number),
-                value: if parts.is_empty() {
-                    "none".to_string()
-                } else {
-                    parts.join(", ")
-                },
-                note: if ends.is_empty() {
-                    "No setpoint of this branch meets the requirements.".to_string()
-                } else {
-                    format!("Ended {}.", ends.join("; "))
-                },
-            });
-        }
         let usable = || {
             stable.iter().flat_map(|b| {
                 b.points.iter().filter(|p| {

@@ -4,14 +4,19 @@
 //! embedded as JSON. Axes and curves come from a few D3 modules, bundled once by `vendor/vendor.sh` (run by hand, never
 //! by the build).
 
+mod cross_check;
 mod data;
 mod gather;
 mod json;
+mod margins;
 mod text;
+mod verdict;
+mod words;
 
 pub use data::{
-    Arm, Branch, BranchPoint, Drive, End, FalseFriend, Fold, Frame, FrameState, Limit, ReportData,
-    Stretch, WorstError,
+    Arm, Branch, BranchPoint, Disagreement, Drive, End, FalseFriend, Fold, Frame, FrameState, Limit,
+    ReportData, Reserve, ReserveCurve, RowKind, Stretch, Strip, StripRow, Verdict, VerdictStretch,
+    WorstError, WorstShape,
 };
 
 pub use gather::gather;
@@ -24,8 +29,10 @@ const SCRIPT: &str = concat!(
     include_str!("page/2_looks.js"),
     include_str!("page/3_plot.js"),
     include_str!("page/4_over_setpoint.js"),
-    include_str!("page/5_at_setpoint.js"),
-    include_str!("page/6_slider.js"),
+    include_str!("page/5_keep_out.js"),
+    include_str!("page/6_at_setpoint.js"),
+    include_str!("page/7_reserves.js"),
+    include_str!("page/8_slider.js"),
     "})();",
 );
 const D3: &str = include_str!("vendor/d3-subset.min.js");
@@ -38,6 +45,8 @@ pub fn render(data: &ReportData) -> String {
     let parts = [
         ("title", text::escape(&data.arm.name)),
         ("style", STYLE.to_string()),
+        ("verdict", text::verdict(&data.verdict)),
+        ("cross_check", text::cross_check(data)),
         ("facts", text::facts(&data.arm)),
         ("false_friends", text::false_friends(data)),
         ("branches", text::branches(data)),
@@ -101,6 +110,11 @@ mod tests {
                 setpoint: f64::NAN,
                 mean_angle_rad: 1.0,
             }],
+            disagreements: vec![],
+            verdict: Verdict::default(),
+            reserves: vec![],
+            strips: vec![],
+            keep_out: vec![],
             limits: vec![],
             worst_errors: vec![],
             table_bytes: 0,

@@ -2,7 +2,7 @@
 
 use std::fmt::Write;
 
-use super::{Arm, Branch, Drive, End, Limit, ReportData, Stretch, WorstError};
+use super::{Arm, Branch, Drive, End, Limit, ReportData, Stretch, Verdict, WorstError};
 
 /// Text with the characters that mean something in HTML replaced.
 pub(super) fn escape(text: &str) -> String {
@@ -13,7 +13,7 @@ pub(super) fn escape(text: &str) -> String {
 }
 
 /// A number with three significant digits, never in powers of ten within what arms measure; a dash when not finite.
-fn number(value: f64) -> String {
+pub(super) fn number(value: f64) -> String {
     if !value.is_finite() {
         return "–".to_string();
     }
@@ -26,7 +26,7 @@ fn number(value: f64) -> String {
     minus(format!("{value:.decimals$}"))
 }
 
-fn degrees(angle_rad: f64) -> String {
+pub(super) fn degrees(angle_rad: f64) -> String {
     if !angle_rad.is_finite() {
         return "–".to_string();
     }
@@ -34,7 +34,7 @@ fn degrees(angle_rad: f64) -> String {
 }
 
 /// The sign a person reads, and no minus before a rounded zero.
-fn minus(digits: String) -> String {
+pub(super) fn minus(digits: String) -> String {
     match digits.strip_prefix('-') {
         Some(rest) if rest.bytes().all(|b| b == b'0' || b == b'.') => rest.to_string(),
         Some(rest) => format!("−{rest}"),
@@ -42,7 +42,7 @@ fn minus(digits: String) -> String {
     }
 }
 
-fn setpoint(drive: Drive, value: f64) -> String {
+pub(super) fn setpoint(drive: Drive, value: f64) -> String {
     match drive {
         Drive::HeldTip => degrees(value),
         Drive::AppliedCouple => format!("{}\u{a0}N\u{a0}m", number(value)),
@@ -92,6 +92,73 @@ pub(super) fn facts(arm: &Arm) -> String {
         let _ = write!(html, "<div><dt>{term}</dt><dd>{}</dd></div>", escape(value));
         html
     })
+}
+
+/// The judgement on top of the page.
+pub(super) fn verdict(verdict: &Verdict) -> String {
+    let items = |lines: &[String]| {
+        lines.iter().fold(String::new(), |mut html, line| {
+            let _ = write!(html, "<li>{}</li>", escape(line));
+            html
+        })
+    };
+    let stretches = verdict
+        .stretches
+        .iter()
+        .fold(String::new(), |mut html, stretch| {
+            let _ = write!(
+                html,
+                "<div class=\"stretch\"><h3>Branch {}: {}</h3><ul>{}</ul>",
+                stretch.branch,
+                escape(&stretch.setpoints),
+                items(&stretch.limits)
+            );
+            if !stretch.by_payload.is_empty() {
+                let _ = write!(
+                    html,
+                    "<p class=\"by-payload\">When the payload is known: {}.</p>",
+                    escape(&stretch.by_payload.join("; "))
+                );
+            }
+            html + "</div>"
+        });
+    format!(
+        "<p class=\"summary\">{}</p><p>{}</p><div class=\"stretches\">{stretches}</div>\
+         <h3>What would help</h3><ul class=\"helps\">{}</ul>",
+        escape(&verdict.summary),
+        escape(&verdict.holds_for),
+        items(&verdict.helps)
+    )
+}
+
+/// Where the two-coordinate model must not be trusted.
+pub(super) fn cross_check(data: &ReportData) -> String {
+    if data.disagreements.is_empty() {
+        return format!(
+            "<p>At all {} setpoints compared it has the rod's stable rest states and no others, and its barriers are within a \
+             factor of two of the rod's.</p>",
+            data.frames.len()
+        );
+    }
+    let rows = data
+        .disagreements
+        .iter()
+        .fold(String::new(), |mut html, row| {
+            let _ = write!(
+                html,
+                "<tr><th scope=\"row\">{}</th><td data-label=\"Setpoints\">{}</td><td data-label=\"Two-coordinate model\">{}</td></tr>",
+                escape(&row.branch),
+                escape(&row.setpoints),
+                escape(&row.what)
+            );
+            html
+        });
+    format!(
+        "<table class=\"stack\"><thead><tr><th scope=\"col\">Rest state</th><th scope=\"col\">Setpoints</th>\
+         <th scope=\"col\">Two-coordinate model</th></tr></thead><tbody>{rows}</tbody></table>\
+         <p>Compared at {} setpoints.</p>",
+        data.frames.len()
+    )
 }
 
 /// What the crosses of figure 1 mean; nothing when there are none.

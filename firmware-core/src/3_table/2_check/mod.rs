@@ -2,6 +2,8 @@
 
 #[path = "2_branch.rs"]
 mod branch;
+#[path = "4_crossing.rs"]
+mod crossing;
 #[path = "1_header.rs"]
 mod header;
 #[path = "3_stretch.rs"]
@@ -13,7 +15,7 @@ use super::error::{Fault, Section, TableError};
 use super::{Limits, Table};
 use crate::bytes::{array_at, crc32, section, u16_at, u32_at};
 use crate::format::{
-    BranchEntry, CRC_LEN, MAGIC, PREFIX_LEN, SliceEntry, Stretch, VERSION, at, take,
+    BranchEntry, CRC_LEN, Crossing, MAGIC, PREFIX_LEN, SliceEntry, Stretch, VERSION, at, take,
 };
 use branch::Numbers;
 
@@ -171,6 +173,7 @@ fn content(
     let own = Own {
         branches: rest.directory,
         count: entry.branches,
+        stretches: entry.stretches,
     };
     let mut previous: Option<u8> = None;
     for branch in 0..entry.branches {
@@ -198,6 +201,15 @@ fn content(
         rest.values = stretch::reserves(&found, rest.values).map_err(place)?;
         before = Some(found);
     }
+    crossing::band(slice, entry.survey)?;
+    for number in 0..entry.crossings {
+        let found = rest.record::<Crossing>().ok_or(broken)?;
+        crossing::check(&found, limits, own).map_err(|fault| Fault::Crossing {
+            slice,
+            crossing: number,
+            fault,
+        })?;
+    }
     Ok(())
 }
 
@@ -221,6 +233,7 @@ impl<'a> Rest<'a> {
 struct Own<'a> {
     branches: &'a [u8],
     count: u8,
+    stretches: u8,
 }
 
 impl Own<'_> {
@@ -235,5 +248,21 @@ impl Own<'_> {
             rest = after;
         }
         None
+    }
+
+    /// Whether `setpoint` lies in a stretch of the branch with this number.
+    fn usable(&self, number: u8, setpoint: f32) -> Option<bool> {
+        let mut rest = self.branches;
+        for _ in 0..self.count {
+            rest = take::<BranchEntry>(rest)?.1;
+        }
+        for _ in 0..self.stretches {
+            let (stretch, after) = take::<Stretch>(rest)?;
+            if stretch.branch == number && stretch.contains(setpoint) {
+                return Some(true);
+            }
+            rest = after;
+        }
+        Some(false)
     }
 }

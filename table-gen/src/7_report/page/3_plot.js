@@ -31,7 +31,7 @@ function padded(values, share) {
 
 // spec: { name, height, x: { label, domain, angle? }, y: { label, domain, angle?, least? }, bands?, lines, rules?, marks?, cursor?, pick? }
 // bands and lines: { points: [[x, y]], colour, dash?, width?, label?: { text, at: share of the line } }
-// rules: { y, text?, kind: "limit" | "zero" }; marks: { x, y, kind, colour, text?, title? }
+// rules: { y, text?, kind: "limit" | "zero", forbidden?: "above" | "below" }; marks: { x, y, kind, colour, text?, title? }
 function plot(host, spec) {
   const { svg, width } = canvas(host, spec.height, spec.name);
   const box = { left: 54, right: width - 14, top: 26, bottom: spec.height - 44 };
@@ -42,7 +42,7 @@ function plot(host, spec) {
   for (const [axis, scale, of] of [[across, x, spec.x], [upright, y, spec.y]]) {
     if (!of.angle) axis.tickFormat(scale.tickFormat(axis.tickValues().length));
   }
-  const inside = `inside-${host.parentNode.id}-${host.dataset.panel || "only"}`;
+  const inside = `inside-${host.closest("figure").id}-${host.dataset.panel || "only"}`;
   svg.append("clipPath").attr("id", inside).append("rect").attr("x", box.left).attr("y", box.top - 1)
     .attr("width", Math.max(0, box.right - box.left)).attr("height", box.bottom - box.top + 2);
 
@@ -67,6 +67,11 @@ function plot(host, spec) {
   }
   for (const rule of spec.rules || []) {
     const level = y(rule.y);
+    if (rule.forbidden) {
+      const [from, to] = rule.forbidden === "above" ? [box.top, level] : [level, box.bottom];
+      area.append("rect").attr("class", "forbidden").attr("x", box.left).attr("width", Math.max(0, box.right - box.left))
+        .attr("y", from).attr("height", Math.max(0, to - from));
+    }
     area.append("line").attr("class", rule.kind).attr("x1", box.left).attr("x2", box.right).attr("y1", level).attr("y2", level);
     if (rule.text) {
       svg.append("text").attr("class", `halo ${rule.kind}`).attr("x", box.right - 4).attr("y", level + (rule.below ? 16 : -6))
@@ -74,8 +79,9 @@ function plot(host, spec) {
     }
   }
   for (const line of spec.lines) {
-    area.append("path").attr("class", "series").attr("d", path(line.points)).attr("fill", "none").attr("stroke", line.colour)
-      .attr("stroke-width", line.width || 2.5).attr("stroke-dasharray", line.dash || null).attr("stroke-linejoin", "round");
+    area.append("path").attr("class", line.kind ? `series ${line.kind}` : "series").attr("d", path(line.points)).attr("fill", "none").attr("stroke", line.colour)
+      .attr("stroke-width", line.width || 2.5).attr("stroke-dasharray", line.dash || null).attr("stroke-linejoin", "round")
+      .attr("stroke-linecap", line.kind === "bounded" ? "round" : null);
   }
   if (Number.isFinite(spec.cursor)) {
     area.append("line").attr("class", "cursor").attr("x1", x(spec.cursor)).attr("x2", x(spec.cursor)).attr("y1", box.top).attr("y2", box.bottom);

@@ -12,7 +12,8 @@ const raised = (frame) => {
 };
 
 // One scale for every slider position, so that what grows on the page grows on the arm.
-const shapePoints = frames.flatMap((frame) => frame.states.flatMap((state) => state.shape));
+const shapeView = viewWith(frames.flatMap((frame) => frame.states.flatMap((state) => [...state.shape, ...(state.worst ? state.worst.shape : [])])));
+const dashOfWorst = "10 4 2 4";
 const energyScale = (() => {
   const all = frames.map(raised);
   const highestState = d3.max(all.flatMap((frame) => frame.states)) || 0;
@@ -26,8 +27,7 @@ function drawShapes(frame) {
   const host = document.querySelector("#fig-shape .plot");
   const side = 46;
   const foot = 54;
-  const [x0, x1] = d3.extent([...shapePoints.map((p) => p[0]), 0]);
-  const [y0, y1] = d3.extent([...shapePoints.map((p) => p[1]), 0]);
+  const { x0, x1, y0, y1 } = shapeView;
   const tall = heightFor(host, 420);
   const scale = Math.min((host.clientWidth - 2 * side) / Math.max(x1 - x0, 1e-6), (tall - 60) / Math.max(y1 - y0, 1e-6));
   const height = Math.ceil((y1 - y0) * scale) + 60 + foot;
@@ -37,6 +37,11 @@ function drawShapes(frame) {
   const left = (width - (x1 - x0) * scale) / 2;
   const x = (v) => left + (v - x0) * scale;
   const y = (v) => 26 + (y1 - v) * scale;
+  const ground = height - 14;
+  const foot0 = ground - 40;
+  const back = [-left / scale, (width - left) / scale].map((off) => x0 + off);
+  drawKeepOut(svg, { width, height: foot0, x, y, scale,
+    corners: [[back[0], y1 + 26 / scale], [back[1], y1 + 26 / scale], [back[1], y1 - (foot0 - 26) / scale], [back[0], y1 - (foot0 - 26) / scale]] });
 
   const hatch = svg.append("pattern").attr("id", "hatch").attr("width", 6).attr("height", 6).attr("patternUnits", "userSpaceOnUse")
     .attr("patternTransform", "rotate(45)");
@@ -46,6 +51,10 @@ function drawShapes(frame) {
   clamp.append("line").attr("x1", -20).attr("x2", 20).attr("stroke", "#1c2228").attr("stroke-width", 2);
 
   const path = d3.line().x((p) => x(p[0])).y((p) => y(p[1]));
+  for (const state of frame.states.filter((other) => other.worst)) {
+    svg.append("path").attr("class", "worst").attr("d", path(state.worst.shape)).attr("fill", "none").attr("stroke", colourOf(state.branch))
+      .attr("stroke-width", 1.75).attr("stroke-dasharray", dashOfWorst);
+  }
   const drawn = frame.states.filter((state) => state.shape.length).sort((a, b) => a.stable - b.stable);
   for (const state of drawn) {
     const colour = colourOf(state.branch);
@@ -64,7 +73,6 @@ function drawShapes(frame) {
   }
 
   const bar = niceLength(90 / scale);
-  const ground = height - 14;
   const rule = svg.append("g").attr("stroke", "#1c2228").attr("stroke-width", 1.5);
   rule.append("path").attr("fill", "none").attr("d", `M4,${ground - 5}v5h${bar * scale}v-5`);
   svg.append("text").attr("x", 4 + (bar * scale) / 2).attr("y", ground - 8).attr("text-anchor", "middle")
@@ -72,6 +80,28 @@ function drawShapes(frame) {
   const g = width - 16;
   rule.append("path").attr("fill", "none").attr("d", `M${g},${ground - 34}v32m-5,-8l5,8l5,-8`);
   svg.append("text").attr("x", g - 12).attr("y", ground - 10).attr("text-anchor", "end").text("gravity");
+}
+
+// The worst corners in words, and the regions outside the view.
+function fillWorst(frame) {
+  const list = d3.select("#worst-corners");
+  list.selectAll("*").remove();
+  for (const state of frame.states.filter((other) => other.worst)) {
+    const item = list.append("li");
+    item.append("strong").style("color", colourOf(state.branch)).text(`Branch ${state.branch}, worst corner: `);
+    item.append("span").text(`${state.worst.words}.`);
+  }
+  if (shapeView.far.length) list.append("li").text(`Too far away to be drawn to scale: ${shapeView.far.join(", ")}.`);
+}
+
+function legendOfShapes() {
+  const any = (of) => frames.some((frame) => frame.states.some(of));
+  legend("fig-shape", [
+    { colour: palette[0], width: 4, text: "stable" },
+    ...(any((state) => !state.stable) ? [{ colour: grey, dash: dashFor.pass, text: "unstable" }] : []),
+    ...(any((state) => state.worst) ? [{ colour: palette[0], width: 1.75, dash: dashOfWorst, text: "in its worst corner" }] : []),
+    ...(data.keep_out.length ? [{ colour: "#a3271b", width: 12, opacity: 0.25, text: "keep out" }] : []),
+  ]);
 }
 
 function niceLength(about) {
@@ -123,7 +153,7 @@ function fillStates(frame) {
     { head: "Mean angle", unit: "°", number: true, of: (state) => fixed(degrees(state.mean_angle_rad), 1) },
     { head: held ? "Tip couple" : "Tip angle", unit: held ? "N m" : "°", number: true, of: (state) => fixed(load(state), digits) },
     { head: "Barrier", unit: "J", number: true, of: (state) => (state.barrier_j === null ? "–" : fixed(state.barrier_j, barrierDigits)) },
-    { head: "Usable", of: (state) => (state.usable ? "yes" : "no") },
+    { head: "Usable", of: (state) => (state.usable ? "yes" : `no: ${state.why_not}`) },
   ];
   const head = d3.select("#states thead");
   const body = d3.select("#states tbody");

@@ -4,7 +4,10 @@ use core::fmt;
 
 use serde::Serialize;
 
-use super::{BranchEntry, CRC_LEN, Header, MAGIC, PREFIX_LEN, SliceEntry, Stretch, VERSION, at};
+use super::{
+    BranchEntry, CRC_LEN, Crossing, Header, MAGIC, PREFIX_LEN, SliceEntry, Stretch, SurveyBand,
+    VERSION, at,
+};
 use crate::bytes::crc32;
 use crate::words::Word::{N, T};
 use crate::words::Words;
@@ -27,6 +30,10 @@ pub struct SliceContents<'a> {
     pub branches: &'a [BranchContents<'a>],
     /// The stretches, at most 255, sorted by branch and setpoint.
     pub stretches: &'a [StretchContents<'a>],
+    /// Stiffness for which the crossings were tried.
+    pub survey: SurveyBand,
+    /// The planned crossings, at most 255.
+    pub crossings: &'a [Crossing],
 }
 
 /// One branch.
@@ -57,6 +64,8 @@ pub enum Part {
     Branches,
     /// Number of stretches of one slice.
     Stretches,
+    /// Number of crossings of one slice.
+    Crossings,
     /// Bytes of the header.
     Header,
     /// Bytes of the directory.
@@ -110,12 +119,14 @@ pub enum WriteError {
 pub fn buffer_len(contents: &Contents<'_>) -> usize {
     // Upper bounds of postcard records: every varint at its longest, every other field at its fixed width.
     const HEADER: usize = 160;
-    const SLICE: usize = 6;
+    const SLICE: usize = 15;
     const BRANCH: usize = 28;
     const STRETCH: usize = 29;
+    const CROSSING: usize = 70;
     let mut len = PREFIX_LEN + HEADER + contents.header.name.len() + CRC_LEN;
     for slice in contents.slices {
         len += SLICE + slice.branches.len() * BRANCH + slice.stretches.len() * STRETCH;
+        len += slice.crossings.len() * CROSSING;
         for branch in slice.branches {
             len += branch.knots.len() * 4;
         }
@@ -172,12 +183,17 @@ fn directory(sink: &mut Sink<'_>, slice: &SliceContents<'_>) -> Result<(), Write
         payload_kg: slice.payload_kg,
         branches: count(Part::Branches, slice.branches.len(), u8::MAX.into())? as u8,
         stretches: count(Part::Stretches, slice.stretches.len(), u8::MAX.into())? as u8,
+        crossings: count(Part::Crossings, slice.crossings.len(), u8::MAX.into())? as u8,
+        survey: slice.survey,
     })?;
     for branch in slice.branches {
         sink.record(&branch.entry)?;
     }
     for stretch in slice.stretches {
         sink.record(&stretch.entry)?;
+    }
+    for crossing in slice.crossings {
+        sink.record(crossing)?;
     }
     Ok(())
 }
@@ -269,6 +285,7 @@ impl fmt::Display for WriteError {
                     Part::Slices => " slices",
                     Part::Branches => " branches in a slice",
                     Part::Stretches => " stretches in a slice",
+                    Part::Crossings => " crossings in a slice",
                     Part::Header => " bytes of header",
                     Part::Directory => " bytes of directory",
                     Part::Total => " bytes",

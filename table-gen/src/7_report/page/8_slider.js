@@ -26,6 +26,8 @@ function draw() {
   drawRest(cursor);
   drawLoad(cursor);
   drawTension(cursor);
+  drawReserves(cursor);
+  drawStrips(cursor);
   if (!frame) return;
   const text = setpointText(frame.setpoint);
   slider.value = String(shown);
@@ -33,13 +35,16 @@ function draw() {
   document.getElementById("setpoint-text").textContent = text;
   for (const place of document.querySelectorAll(".at")) place.textContent = `at ${text}`;
   drawShapes(frame);
+  fillWorst(frame);
   drawEnergy(frame);
   fillStates(frame);
 }
 
 legendOfRest();
 legendOfDrive();
+legendOfReserves();
 if (frames.length) {
+  legendOfShapes();
   legendOfEnergy();
   slider.max = String(frames.length - 1);
   slider.addEventListener("input", () => show(Number(slider.value)));
