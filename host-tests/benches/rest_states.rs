@@ -1,11 +1,15 @@
-//! How long it takes to make the greenhouse wand's table, and to find and classify one rest state.
+//! How long it takes to make the greenhouse wand's table, to find its margins in more and more corners, and to find and
+//! classify one rest state.
 //!
 //! `cargo bench -p host-tests`
 
-use criterion::{BatchSize, Criterion, criterion_group, criterion_main};
+use criterion::{BatchSize, BenchmarkId, Criterion, criterion_group, criterion_main};
 use std::hint::black_box;
 use std::path::Path;
 use table_gen::arm_file::{Arm, read};
+use table_gen::margins::corners::{Corners, Levels};
+use table_gen::margins::requirements::Assessor;
+use table_gen::margins::usable::Usable;
 use table_gen::rest_states::RestStates;
 use table_gen::rest_states::curve::Solver;
 use table_gen::rod::Rod;
@@ -25,7 +29,7 @@ fn places() -> impl Iterator<Item = f64> {
 fn whole_table(bench: &mut Criterion) {
     let arm = wand();
     bench.bench_function("whole greenhouse wand", |b| {
-        b.iter(|| tabulate(black_box(&arm), &mut |_| {}).expect("the example tabulates"));
+        b.iter(|| tabulate(black_box(&arm), &|_| {}).expect("the example tabulates"));
     });
 }
 
@@ -66,9 +70,30 @@ fn one_shot(bench: &mut Criterion) {
     });
 }
 
+/// All margins over the whole setpoint range, by the number of corners they are found in.
+fn whole_margins(bench: &mut Criterion) {
+    let arm = wand();
+    let mut group = bench.benchmark_group("whole margins, corners");
+    group.sample_size(10);
+    for levels in [Levels::Nominal, Levels::Ends, Levels::EndsAndMiddle] {
+        let corners = Corners::find(&arm, levels, &|_| {})
+            .expect("certified")
+            .arms
+            .len();
+        group.bench_function(BenchmarkId::from_parameter(corners), |b| {
+            b.iter(|| {
+                let corners = Corners::find(black_box(&arm), levels, &|_| {}).expect("certified");
+                let assessor = Assessor::new(&arm, &corners);
+                Usable::find(&assessor, &mut |_| {}).expect("rest states")
+            });
+        });
+    }
+    group.finish();
+}
+
 criterion_group! {
     name = rest_states;
     config = Criterion::default().sample_size(30).measurement_time(std::time::Duration::from_secs(3));
-    targets = whole_table, one_rest_state, one_shot
+    targets = whole_table, whole_margins, one_rest_state, one_shot
 }
 criterion_main!(rest_states);

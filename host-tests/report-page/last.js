@@ -14,7 +14,9 @@
       });
       return {
         figure: svg.closest("figure").id, role: svg.getAttribute("role"), name: svg.getAttribute("aria-label"),
-        width: box.width, marks: svg.querySelectorAll("path.series, path.mark, path.shape").length,
+        width: box.width, panel: svg.parentNode.dataset.panel || "",
+        marks: svg.querySelectorAll("path.series, path.mark, path.shape, rect.run").length,
+        limits: svg.querySelectorAll("line.limit").length,
         broken: svg.outerHTML.includes("NaN") || svg.outerHTML.includes("Infinity"),
         smallest_text_px: Math.min(...sizes), text_outside: outside.map((text) => text.textContent),
       };
@@ -37,6 +39,18 @@
         return Math.min(...gaps);
       }),
       rows: all("#states tbody tr").length,
+      usable: all("#states tbody tr").map((row) => row.lastChild.textContent),
+      worst: all("#fig-shape path.worst").map((path) => ({ d: path.getAttribute("d"), length: path.getTotalLength(), dashed: path.hasAttribute("stroke-dasharray") })),
+      worst_words: all("#worst-corners li").map((item) => item.textContent),
+      regions: all("#fig-shape path.keep-out").map((path) => {
+        const { width, height } = path.getBBox();
+        return { name: path.textContent, width, height };
+      }),
+      region_names: all("#fig-shape text.region").map((text) => text.textContent),
+      runs: all("#fig-strips rect.run").map((bar) => Number(bar.getAttribute("width"))),
+      strip_rows: all("#fig-strips rect.fails").length,
+      verdict: document.querySelector(".verdict").textContent,
+      verdict_height: document.querySelector(".verdict").getBoundingClientRect().height,
       svgs,
     };
   }

@@ -1,56 +1,13 @@
 //! Bad arm files at the command line: exit code 2, one message with the place, nothing written.
 
+use host_tests::program::table_gen;
 use std::{
     fs,
     path::{Path, PathBuf},
     process::{Command, Output},
-    sync::OnceLock,
 };
 
 const GOOD: &str = include_str!("../../examples/greenhouse-wand/arm.toml");
-
-/// The `table-gen` program, built in the same target directory and profile as this test.
-///
-/// `cargo test` alone does not build another package's program.
-fn table_gen() -> &'static Path {
-    static PROGRAM: OnceLock<PathBuf> = OnceLock::new();
-    PROGRAM.get_or_init(|| {
-        let this = std::env::current_exe().expect("this test runs from a file");
-        let profile_dir = this.ancestors().nth(2).expect("target/PROFILE/deps/this");
-        let target_dir = profile_dir.parent().expect("target/PROFILE");
-        let mut cargo = Command::new(env!("CARGO"));
-        cargo
-            .args([
-                "build",
-                "--locked",
-                "--package",
-                "table-gen",
-                "--bin",
-                "table-gen",
-            ])
-            .args(["--message-format", "json-render-diagnostics"])
-            .args([
-                "--manifest-path",
-                concat!(env!("CARGO_MANIFEST_DIR"), "/../Cargo.toml"),
-            ])
-            .arg("--target-dir")
-            .arg(target_dir);
-        if profile_dir.ends_with("release") {
-            cargo.arg("--release");
-        }
-        let output = cargo.output().expect("cargo runs");
-        let errors = String::from_utf8_lossy(&output.stderr);
-        assert!(
-            output.status.success(),
-            "table-gen does not build:\n{errors}"
-        );
-        String::from_utf8_lossy(&output.stdout)
-            .lines()
-            .filter_map(|line| serde_json::from_str::<serde_json::Value>(line).ok())
-            .find_map(|message| message["executable"].as_str().map(PathBuf::from))
-            .expect("cargo names the program it built")
-    })
-}
 
 fn build(arm_file: &Path, out: &Path) -> Output {
     Command::new(table_gen())
@@ -181,7 +138,7 @@ fn range_inverted() {
     refused(
         &range,
         &[
-            "bad.toml:30:17",
+            "bad.toml:32:17",
             "found [120.0, -120.0]",
             "lowest below highest",
         ],
@@ -190,8 +147,65 @@ fn range_inverted() {
 
 #[test]
 fn missing_section() {
-    let no_payload = with("[payload]\nmass_kg = 0.060\n", "");
-    refused(&no_payload, &["bad.toml:", "section [payload] is missing"]);
+    let from = GOOD.find("[payload]").expect("the section");
+    let to = GOOD.find("[base]").expect("the section after it");
+    let no_payload = [&GOOD[..from], &GOOD[to..]].concat();
+    refused(
+        no_payload.as_bytes(),
+        &["bad.toml:", "section [payload] is missing"],
+    );
+}
+
+#[test]
+fn payload_outside_its_range() {
+    refused(
+        &with("[0.050, 0.075]", "[0.065, 0.075]"),
+        &["bad.toml:19:12", "[0.065, 0.075]"],
+    );
+}
+
+#[test]
+fn tolerance_out_of_range() {
+    refused(
+        &with("stiffness_percent = 10.0", "stiffness_percent = -1.0"),
+        &["bad.toml:39:21", "found -1.0", "allowed: 0 to 90"],
+    );
+}
+
+#[test]
+fn requirement_of_the_other_drive() {
+    refused(
+        &with("setpoint_reserve_deg = 4.0", "setpoint_reserve_n_m = 4.0"),
+        &[
+            "bad.toml:45:",
+            "setpoint_reserve_n_m",
+            "setpoint_reserve_deg",
+        ],
+    );
+}
+
+#[test]
+fn requirement_below_its_range() {
+    refused(
+        &with("tension_factor = 1.3", "tension_factor = 0.9"),
+        &["bad.toml:46:18", "found 0.9", "allowed: 1 to"],
+    );
+}
+
+#[test]
+fn keep_out_without_extent() {
+    refused(
+        &with("radius_m = 0.06", "radius_m = 0.0"),
+        &["bad.toml:55:", "found 0.0", "disc.radius_m"],
+    );
+}
+
+#[test]
+fn keep_out_without_direction() {
+    refused(
+        &with("normal = [0.0, 1.0]", "normal = [0.0, 0.0]"),
+        &["bad.toml:51:", "normal", "found [0.0, 0.0]"],
+    );
 }
 
 #[test]

@@ -22,7 +22,7 @@ fn tables() -> &'static [Tabulation] {
                 let file = examples.join(name).join("arm.toml");
                 let arm =
                     table_gen::arm_file::read(&file).unwrap_or_else(|error| panic!("{error}"));
-                tabulate(&arm, &mut |_| {}).unwrap_or_else(|error| panic!("{name}: {error}"))
+                tabulate(&arm, &|_| {}).unwrap_or_else(|error| panic!("{name}: {error}"))
             })
             .collect()
     })
@@ -40,7 +40,7 @@ struct Pair {
 fn pairs(made: &Tabulation, setpoint: f32) -> Vec<Pair> {
     let table = Table::new(&made.bytes).expect("a table");
     let slice = table.slices().next().expect("a slice");
-    let rest = &made.rest;
+    let rest = &made.corners.nominal;
     let at = rest.rod.setpoint_from_si(setpoint.into());
     let states = rest
         .at(&mut Solver::new(&rest.modal), at)
@@ -75,7 +75,11 @@ fn within(what: &str, found: f32, truth: f64, error: f32) -> Result<(), TestCase
 }
 
 fn header_holds(made: &Tabulation, header: &Header, pair: &Pair) -> Result<(), TestCaseError> {
-    let (rod, modal, error) = (&made.rest.rod, &made.rest.modal, header.worst_error);
+    let (rod, modal, error) = (
+        &made.corners.nominal.rod,
+        &made.corners.nominal.modal,
+        header.worst_error,
+    );
     let (answer, truth) = (&pair.answer, &pair.truth);
     prop_assert_eq!(usize::from(answer.index), truth.index);
     within(
@@ -151,7 +155,7 @@ proptest! {
     #[test]
     fn errors_in_the_header_hold_beside_folds(example in 0..EXAMPLES.len(), pick in any::<prop::sample::Index>(), decades in 1.0..5.0_f64, up in any::<bool>()) {
         let made = &tables()[example];
-        let rest = &made.rest;
+        let rest = &made.corners.nominal;
         if rest.folds.is_empty() {
             return Ok(());
         }
@@ -173,7 +177,7 @@ proptest! {
     #[test]
     fn answers_are_as_accurate_as_asked(example in 0..EXAMPLES.len(), x in 0.0..1.0) {
         let made = &tables()[example];
-        let rest = &made.rest;
+        let rest = &made.corners.nominal;
         let [lo, hi] = rest.rod.setpoints;
         let at: f64 = lo * (1.0 - x) + hi * x;
         let beside = 1e-3 * (hi - lo);

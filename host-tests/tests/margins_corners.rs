@@ -35,24 +35,58 @@ fn branch_that_vanishes_on_the_way_is_not_usable() {
         let state = corners.nominal_state(label, 1.0).expect("on the branch");
         state.mean_angle()
     };
-    let left = assessed.iter().find(|a| mean_angle(a.label) < 0.0).expect("there with gamma .05");
-    let right = assessed.iter().find(|a| mean_angle(a.label) > 0.0).expect("there with any gamma");
-    for (corner, (left, right)) in corners.arms.iter().zip(left.margins.iter().zip(&right.margins)) {
+    let left = assessed
+        .iter()
+        .find(|a| mean_angle(a.label) < 0.0)
+        .expect("there with gamma .05");
+    let right = assessed
+        .iter()
+        .find(|a| mean_angle(a.label) > 0.0)
+        .expect("there with any gamma");
+    for (corner, (left, right)) in corners
+        .arms
+        .iter()
+        .zip(left.margins.iter().zip(&right.margins))
+    {
         let stiffer = corner.corner.stiffness_percent > 0.0;
-        assert_eq!(*left == Look::Vanished, stiffer, "left, {:?}", corner.corner);
-        assert!(matches!(right, Look::There(_)), "right, {:?}", corner.corner);
+        assert_eq!(
+            *left == Look::Vanished,
+            stiffer,
+            "left, {:?}",
+            corner.corner
+        );
+        assert!(
+            matches!(right, Look::There(_)),
+            "right, {:?}",
+            corner.corner
+        );
     }
     let findings = assessor.findings(left, None);
-    let stable = findings.iter().find(|f| f.kind == Kind::Stable).expect("always judged");
+    let stable = findings
+        .iter()
+        .find(|f| f.kind == Kind::Stable)
+        .expect("always judged");
     assert!(!stable.holds);
-    assert!(stable.corner.expect("the corner is named").stiffness_percent > 0.0);
+    assert!(
+        stable
+            .corner
+            .expect("the corner is named")
+            .stiffness_percent
+            > 0.0
+    );
 
     let usable = Usable::find(&assessor, &mut |_| {}).expect("rest states");
     let reaches = |label| {
-        usable.stretches.iter().any(|s| s.label == label && s.ends[0] <= 1.0 && 1.0 <= s.ends[1])
+        usable
+            .stretches
+            .iter()
+            .any(|s| s.label == label && s.ends[0] <= 1.0 && 1.0 <= s.ends[1])
     };
     assert!(!reaches(left.label), "the left branch is usable at 1.0");
-    assert!(reaches(right.label), "the right branch is not usable at 1.0");
+    assert!(
+        reaches(right.label),
+        "the right branch is not usable at 1.0"
+    );
     // Nearer to the middle it is there in every corner.
     let left_end = usable
         .stretches
@@ -60,11 +94,19 @@ fn branch_that_vanishes_on_the_way_is_not_usable() {
         .filter(|s| s.label == left.label)
         .map(|s| s.ends[1])
         .fold(f64::NEG_INFINITY, f64::max);
-    assert!(left_end > 0.75 && left_end < 1.0, "the left branch is usable up to {left_end}");
+    assert!(
+        left_end > 0.75 && left_end < 1.0,
+        "the left branch is usable up to {left_end}"
+    );
 
     let why = Why::new(&arm, 1.0, &|_| {}).expect("rest states");
     for branch in &why.branches {
-        assert_eq!(branch.usable, branch.branch == right.label, "branch {}", branch.branch);
+        assert_eq!(
+            branch.usable,
+            branch.branch == right.label,
+            "branch {}",
+            branch.branch
+        );
     }
 }
 
@@ -80,7 +122,9 @@ fn other_shape_nearby_is_not_taken_for_the_lost_one() {
     assert_eq!(assessed.len(), 2, "two shapes side by side");
     let mut lost = 0;
     for assessed in &assessed {
-        let own = corners.nominal_state(assessed.label, 0.0).expect("on the branch");
+        let own = corners
+            .nominal_state(assessed.label, 0.0)
+            .expect("on the branch");
         for (corner, look) in corners.arms.iter().zip(&assessed.margins) {
             let states = corner.states(0.0).expect("rest states");
             let wells: Vec<f64> = states
@@ -96,7 +140,10 @@ fn other_shape_nearby_is_not_taken_for_the_lost_one() {
                     lost += 1;
                     assert!(!same_side, "{:?}: {wells:?} overlooked", corner.corner);
                     let away = (wells[0] - own.mean_angle()).abs();
-                    println!("{:?}: lost, the nearest stable shape is {away:.3} rad away", corner.corner);
+                    println!(
+                        "{:?}: lost, the nearest stable shape is {away:.3} rad away",
+                        corner.corner
+                    );
                     assert!(away < 1.0, "the other shape is near");
                 }
                 Look::NotLookedAt => panic!("every corner was asked for"),
@@ -114,9 +161,17 @@ fn slowly(nominal: &RestStates, corner: &CornerArm, from: &RestPoint) -> Option<
     let mut state = from.clone();
     for step in 1..=SLOW_STEPS {
         let x = step as f64 / SLOW_STEPS as f64;
-        let rod = nominal.modal.varied(1.0 + x * stiffness, x * more_payload, x * tilt);
+        let rod = nominal
+            .modal
+            .varied(1.0 + x * stiffness, x * more_payload, x * tilt);
         let next = Solver::new(&rod).at_setpoint(&state.c, from.setpoint)?;
-        let moved = next.c.iter().zip(&state.c).map(|(a, b)| (a - b).powi(2)).sum::<f64>().sqrt();
+        let moved = next
+            .c
+            .iter()
+            .zip(&state.c)
+            .map(|(a, b)| (a - b).powi(2))
+            .sum::<f64>()
+            .sqrt();
         if next.index != 0 || moved > SLOW_MOVE {
             return None;
         }
@@ -139,15 +194,27 @@ fn wand_is_followed_into_its_corners_as_if_slowly() {
             if branch.index != 0 || !branch.covers(setpoint) {
                 continue;
             }
-            let from = corners.nominal_state(label, setpoint).expect("on the branch");
+            let from = corners
+                .nominal_state(label, setpoint)
+                .expect("on the branch");
             for corner in &corners.arms {
                 let what = format!("branch {label}, setpoint {setpoint}, {:?}", corner.corner);
-                match (corner.follow(&corners.nominal, &from), slowly(&corners.nominal, corner, &from)) {
+                match (
+                    corner.follow(&corners.nominal, &from),
+                    slowly(&corners.nominal, corner, &from),
+                ) {
                     (Some(found), Some(slow)) => {
-                        let off = found.iter().zip(&slow).map(|(a, b)| (a - b).abs()).fold(0.0, f64::max);
+                        let off = found
+                            .iter()
+                            .zip(&slow)
+                            .map(|(a, b)| (a - b).abs())
+                            .fold(0.0, f64::max);
                         assert!(off < 1e-6, "{what}: ends {off:e} rad elsewhere");
                         let states = corner.states(setpoint).expect("rest states");
-                        assert!(states.nearest_well(&found).is_some(), "{what}: no rest state of the corner");
+                        assert!(
+                            states.nearest_well(&found).is_some(),
+                            "{what}: no rest state of the corner"
+                        );
                         there += 1;
                     }
                     (None, None) => lost += 1,

@@ -7,9 +7,7 @@
 
 use host_tests::arms::{UniformArm, carry};
 use host_tests::reference::{number, parse, rows};
-use host_tests::tolerances::{
-    ASKED, ASKED_FOR_RESERVES, RESERVE, REST_STATE, ROUNDING,
-};
+use host_tests::tolerances::{ASKED, ASKED_FOR_RESERVES, RESERVE, REST_STATE, ROUNDING};
 use serde_json::Value;
 use table_gen::arm_file::{Accuracy, Arm, STANDARD_GRAVITY_M_S2, Tolerance};
 use table_gen::margins::corners::{Corners, Levels};
@@ -88,7 +86,11 @@ fn stiffness_can_fall_to_the_critical_one() {
         }
         let softer = upright(0.98 * critical, fraction, held);
         let nothing = straight_reserve(&softer, Grows::StiffnessLoss);
-        assert_eq!(nothing, Some(0.0), "an arm softer than critical has no reserve");
+        assert_eq!(
+            nothing,
+            Some(0.0),
+            "an arm softer than critical has no reserve"
+        );
     }
 }
 
@@ -171,12 +173,17 @@ fn whole_arms_keep_their_payload_reserve_beyond_the_range() {
             };
             let heaviest_kg = fraction + heavier * payload;
             arm.payload.range_kg = [fraction, heaviest_kg];
-            let what = format!("{held:?}, tip fraction {fraction}, {heavier} of {payload} kg, {tolerance}");
+            let what = format!(
+                "{held:?}, tip fraction {fraction}, {heavier} of {payload} kg, {tolerance}"
+            );
             straight(&arm, |_, assessed| {
                 let (reserve_kg, corner) = assessed.payload_reserve.expect("bounded");
                 assert_reserve(Some(reserve_kg), (1.0 - heavier) * payload, &what);
                 assert_eq!(corner.payload_kg, heaviest_kg, "{what}");
-                assert!((corner.stiffness_percent + 100.0 * tolerance).abs() < ROUNDING, "{what}");
+                assert!(
+                    (corner.stiffness_percent + 100.0 * tolerance).abs() < ROUNDING,
+                    "{what}"
+                );
             });
         }
     }
@@ -201,21 +208,31 @@ fn nominal(arm: &mut Arm) -> Corners {
 #[test]
 fn barriers_of_the_nominal_arm() {
     for row in rows(&parse(include_str!("../reference/barriers.json"))["held_tip"]) {
-        assert_eq!(row["mass"], "tip", "the arms here carry all their mass at the tip");
+        assert_eq!(
+            row["mass"], "tip",
+            "the arms here carry all their mass at the tip"
+        );
         let setpoint = number(&row["q0"]);
         let mut arm = UniformArm::with_tip_mass(number(&row["gamma"])).held_tip(setpoint);
         let corners = nominal(&mut arm);
         let assessor = Assessor::new(&arm, &corners);
         let assessed = assessor.assess(setpoint, None, None).expect("rest states");
         let states = row["states"].as_array().expect("a list");
-        assert_eq!(assessed.len(), states.len(), "stable states at gamma {} q0 {setpoint}", row["gamma"]);
+        assert_eq!(
+            assessed.len(),
+            states.len(),
+            "stable states at gamma {} q0 {setpoint}",
+            row["gamma"]
+        );
         for state in states {
             let what = format!("gamma {}, q0 {setpoint}, q1 {}", row["gamma"], state["q1"]);
             let mean_angle = number(&state["q1"]);
             let found = assessed
                 .iter()
                 .find(|assessed| {
-                    let own = corners.nominal_state(assessed.label, setpoint).expect("on the branch");
+                    let own = corners
+                        .nominal_state(assessed.label, setpoint)
+                        .expect("on the branch");
                     (own.mean_angle() - mean_angle).abs() < 1e-4
                 })
                 .unwrap_or_else(|| panic!("{what}: not found"));
@@ -270,10 +287,13 @@ fn knock_is_consistent_with_mass_and_barrier() {
     assert_eq!(assessed.len(), 2, "two stable shapes");
     let stations = Stations::new(corners.nominal.modal.modes());
     for assessed in assessed {
-        let state = corners.nominal_state(assessed.label, 0.3).expect("on the branch");
+        let state = corners
+            .nominal_state(assessed.label, 0.3)
+            .expect("on the branch");
         let shape = stations.shape(&state.c, 0.0);
         let corner = &corners.arms[0];
-        let mass_kg = stations.tip_mass_kg(&corner.rest.modal, &corner.rest.rod, &corner.arm, &shape);
+        let mass_kg =
+            stations.tip_mass_kg(&corner.rest.modal, &corner.rest.rod, &corner.arm, &shape);
         assert!(
             mass_kg > 0.7 && mass_kg < 1.0,
             "the payload and some of the spine take part, not {mass_kg} kg"

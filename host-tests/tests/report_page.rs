@@ -3,12 +3,13 @@
 
 use std::{
     fs,
-    path::{Path, PathBuf},
+    path::Path,
     process::{Command, Stdio},
     sync::OnceLock,
     time::{Duration, Instant},
 };
 
+use host_tests::program::table_gen;
 use serde::Deserialize;
 
 /// Narrowest and widest page looked at, CSS pixels; `frames.html` has the same.
@@ -45,7 +46,23 @@ struct Look {
     cursors: Vec<String>,
     off_curve: Vec<f64>,
     rows: usize,
+    usable: Vec<String>,
+    worst: Vec<Shape>,
+    worst_words: Vec<String>,
+    regions: Vec<Region>,
+    region_names: Vec<String>,
+    runs: Vec<f64>,
+    strip_rows: usize,
+    verdict: String,
+    verdict_height: f64,
     svgs: Vec<Svg>,
+}
+
+#[derive(Deserialize)]
+struct Region {
+    name: String,
+    width: f64,
+    height: f64,
 }
 
 #[derive(Deserialize)]
@@ -58,6 +75,8 @@ struct Shape {
 #[derive(Deserialize)]
 struct Svg {
     figure: String,
+    panel: String,
+    limits: usize,
     role: Option<String>,
     name: Option<String>,
     width: f64,
@@ -65,38 +84,6 @@ struct Svg {
     broken: bool,
     smallest_text_px: f64,
     text_outside: Vec<String>,
-}
-
-/// The `table-gen` program, built in the same target directory and profile as this test.
-fn table_gen() -> PathBuf {
-    let this = std::env::current_exe().expect("this test runs from a file");
-    let profile_dir = this.ancestors().nth(2).expect("target/PROFILE/deps/this");
-    let mut cargo = Command::new(env!("CARGO"));
-    cargo
-        .args([
-            "build",
-            "--locked",
-            "--package",
-            "table-gen",
-            "--bin",
-            "table-gen",
-        ])
-        .args([
-            "--manifest-path",
-            concat!(env!("CARGO_MANIFEST_DIR"), "/../Cargo.toml"),
-        ])
-        .arg("--target-dir")
-        .arg(profile_dir.parent().expect("target/PROFILE"));
-    if profile_dir.ends_with("release") {
-        cargo.arg("--release");
-    }
-    let output = cargo.output().expect("cargo runs");
-    assert!(
-        output.status.success(),
-        "table-gen does not build:\n{}",
-        String::from_utf8_lossy(&output.stderr)
-    );
-    profile_dir.join(format!("table-gen{}", std::env::consts::EXE_SUFFIX))
 }
 
 /// The report of the greenhouse wand, made once.
@@ -172,6 +159,7 @@ fn seen() -> &'static [Seen] {
         let text = results
             .replace("&lt;", "<")
             .replace("&gt;", ">")
+            .replace("&nbsp;", "\u{a0}")
             .replace("&amp;", "&");
         let values: Vec<serde_json::Value> = serde_json::from_str(&text)
             .unwrap_or_else(|_| panic!("the probe did not report from both frames: {text:?}"));
@@ -255,6 +243,14 @@ fn every_figure_is_drawn_and_named() {
         "fig-drive",
         "fig-shape",
         "fig-energy",
+        "fig-reserves",
+        "fig-reserves",
+        "fig-reserves",
+        "fig-reserves",
+        "fig-reserves",
+        "fig-reserves",
+        "fig-reserves",
+        "fig-strips",
     ];
     for seen in seen() {
         for look in looks(seen) {
@@ -285,7 +281,7 @@ fn the_slider_moves_the_shapes_the_cursor_and_the_words() {
             assert_ne!(pair[0].value_text, pair[1].value_text);
             assert_eq!(
                 pair[0].cursors.len(),
-                3,
+                11,
                 "one in each plot over the setpoint"
             );
             for (before, after) in pair[0].cursors.iter().zip(&pair[1].cursors) {
@@ -325,6 +321,191 @@ fn the_shapes_are_the_states_of_the_data_to_scale() {
     let first = &seen()[0].first;
     assert!(first.shapes.iter().filter(|shape| !shape.dashed).count() >= 2);
     assert!(first.shapes.iter().any(|shape| shape.dashed));
+}
+
+/// Numbers of a text as a person reads them.
+fn numbers(text: &str) -> Vec<f64> {
+    text.replace('−', "-")
+        .split(|c: char| !(c.is_ascii_digit() || c == '.' || c == '-'))
+        .filter_map(|part| part.trim_end_matches('.').parse().ok())
+        .collect()
+}
+
+#[test]
+fn the_verdict_says_where_what_ends_it_and_what_would_help() {
+    let verdict = &seen()[1].first.verdict;
+    let branches = embedded()["branches"].as_array().expect("branches");
+    let summary = verdict
+        .split_once("may be used")
+        .and_then(|(_, after)| after.split_once("With any payload"))
+        .expect("a sentence on where the arm may be used")
+        .0;
+    let said = numbers(summary);
+    let mut stretches = 0;
+    for stretch in branches
+        .iter()
+        .flat_map(|branch| branch["stretches"].as_array().expect("stretches"))
+    {
+        stretches += 1;
+        for end in ["from", "to"] {
+            let degrees = stretch[end].as_f64().expect("a number").to_degrees();
+            assert!(
+                said.iter().any(|said| (said - degrees).abs() <= 0.051),
+                "{degrees} is missing from {summary:?}"
+            );
+        }
+    }
+    assert!(stretches > 0, "the wand is usable somewhere");
+    for requirement in ["the clearance fails", "the setpoint reserve fails"] {
+        assert!(verdict.contains(requirement), "{requirement:?} is missing");
+    }
+    assert!(verdict.contains("from bench"), "the region is named");
+    assert!(verdict.contains("a spine 10\u{a0}% softer and the base tilted 2°"));
+    let helps = verdict.split_once("What would help").expect("a heading").1;
+    let changes = numbers(helps);
+    // Two lines: percent, width now, width then.
+    assert_eq!(changes.len(), 6, "{helps}");
+    for line in changes.chunks(3) {
+        assert!(line[2] > line[1] && line[1] > 0.0, "{helps}");
+        assert_eq!(line[1], changes[1], "{helps}");
+    }
+    for seen in seen() {
+        let most = if seen.width < 600.0 { 1000.0 } else { 700.0 };
+        assert!(
+            seen.first.verdict_height < most,
+            "the verdict takes {} px at {} px",
+            seen.first.verdict_height,
+            seen.width
+        );
+    }
+}
+
+#[test]
+fn every_reserve_has_its_limit_and_its_curves() {
+    let reserves = embedded()["reserves"].as_array().expect("reserves");
+    let keys: Vec<&str> = reserves
+        .iter()
+        .map(|reserve| reserve["key"].as_str().expect("a key"))
+        .collect();
+    assert_eq!(
+        keys,
+        [
+            "knock_n_s",
+            "payload_reserve_kg",
+            "stiffness_reserve_percent",
+            "setpoint_reserve_deg",
+            "tension_factor",
+            "strain",
+            "clearance_m"
+        ]
+    );
+    for seen in seen() {
+        for look in looks(seen) {
+            let drawn: Vec<&Svg> = look
+                .svgs
+                .iter()
+                .filter(|svg| svg.figure == "fig-reserves")
+                .collect();
+            let panels: Vec<&str> = drawn.iter().map(|svg| svg.panel.as_str()).collect();
+            assert_eq!(panels, keys);
+            for svg in drawn {
+                assert_eq!(svg.limits, 1, "{}", svg.panel);
+                assert!(
+                    svg.marks >= 2,
+                    "one curve for each stable branch in {}",
+                    svg.panel
+                );
+            }
+        }
+    }
+}
+
+#[test]
+fn the_strips_show_where_each_requirement_holds() {
+    let strips = embedded()["strips"].as_array().expect("strips");
+    assert_eq!(strips.len(), 2, "the wand has two stable branches");
+    let rows: Vec<&serde_json::Value> = strips
+        .iter()
+        .flat_map(|strip| strip["rows"].as_array().expect("rows"))
+        .collect();
+    let runs = |row: &serde_json::Value| row["runs"].as_array().expect("runs").len();
+    for seen in seen() {
+        for look in looks(seen) {
+            assert_eq!(look.strip_rows, rows.len());
+            assert_eq!(
+                look.runs.len(),
+                rows.iter().map(|row| runs(row)).sum::<usize>()
+            );
+            assert!(look.runs.iter().all(|width| *width > 1.0));
+        }
+    }
+    // All together holds nowhere that one requirement fails, but for what interpolation leaves.
+    for strip in strips {
+        let rows = strip["rows"].as_array().expect("rows");
+        let all = rows.iter().find(|row| row["kind"] == "all").expect("a row");
+        let ends = |run: &serde_json::Value| {
+            [0, 1].map(|end| run[end].as_f64().expect("a number").to_degrees())
+        };
+        for row in rows.iter().filter(|row| row["kind"] == "requirement") {
+            for run in all["runs"].as_array().expect("runs") {
+                let [from, to] = ends(run);
+                let within = row["runs"].as_array().expect("runs").iter().any(|run| {
+                    let [lower, upper] = ends(run);
+                    lower <= from + 0.5 && to - 0.5 <= upper
+                });
+                assert!(within, "{} fails inside {from} to {to}", row["name"]);
+            }
+        }
+    }
+}
+
+#[test]
+fn the_keep_out_regions_and_the_worst_corners_are_drawn_to_scale() {
+    for seen in seen() {
+        for look in looks(seen) {
+            assert_eq!(look.region_names, ["bench", "lamp"]);
+            let names: Vec<&str> = look.regions.iter().map(|r| r.name.as_str()).collect();
+            assert_eq!(names, ["bench", "lamp"]);
+            let [bench, lamp] = [&look.regions[0], &look.regions[1]];
+            let px_per_m = look.shapes[0].length / 0.6;
+            for size in [lamp.width, lamp.height] {
+                assert!(
+                    (size - 0.12 * px_per_m).abs() < 0.03 * size,
+                    "a lamp of {size} px at {px_per_m} px/m"
+                );
+            }
+            assert!(bench.width > 3.0 * lamp.width && bench.height > 10.0);
+            assert_eq!(look.worst.len(), look.worst_words.len());
+            for worst in &look.worst {
+                assert!(worst.dashed && !worst.d.is_empty());
+                assert!((worst.length / px_per_m - 0.6).abs() < LENGTH_SPREAD * 0.6);
+            }
+            for words in &look.worst_words {
+                assert!(words.contains("bench") || words.contains("lamp"), "{words}");
+            }
+        }
+    }
+    assert_eq!(seen()[0].first.worst.len(), 2, "one for each stable branch");
+}
+
+#[test]
+fn the_states_table_says_why_a_state_may_not_be_used() {
+    let mut answers = [0, 0];
+    for look in looks(&seen()[1]) {
+        let frame = look.frame.expect("the slider stands somewhere");
+        let states = &embedded()["frames"][frame]["states"];
+        for (place, said) in look.usable.iter().enumerate() {
+            let state = &states[place];
+            let why = state["why_not"].as_str();
+            assert_eq!(state["usable"] == true, why.is_none());
+            match why {
+                None => assert_eq!(said, "yes"),
+                Some(why) => assert_eq!(*said, format!("no: {why}")),
+            }
+            answers[usize::from(why.is_none())] += 1;
+        }
+    }
+    assert!(answers.iter().all(|&count| count > 0), "{answers:?}");
 }
 
 #[test]

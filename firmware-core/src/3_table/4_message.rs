@@ -347,9 +347,11 @@ impl fmt::Display for StretchFault {
 impl fmt::Display for CrossingFault {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match *self {
-            Self::SameBranch { branch } => {
-                f.say(&[T("it ends on branch "), N(branch.into()), T(", where it begins")])
-            }
+            Self::SameBranch { branch } => f.say(&[
+                T("it ends on branch "),
+                N(branch.into()),
+                T(", where it begins"),
+            ]),
             Self::NotStable { branch } => f.say(&[
                 T("the arm cannot rest on branch "),
                 N(branch.into()),

@@ -37,6 +37,12 @@ pub fn choose(load: &Load<'_>, present: Present, request: f32) -> Answer {
     decide(load, present, request).unwrap_or_else(Answer::Refused)
 }
 
+/// The safe setpoints around `setpoint` on `branch`, lowest and highest; `None` where it is not safe.
+pub(crate) fn usable_around(load: &Load<'_>, branch: u8, setpoint: f32) -> Option<(f32, f32)> {
+    let around = Interval::around(load, branch, setpoint)?;
+    Some((around.from, around.to))
+}
+
 fn decide(load: &Load<'_>, present: Present, request: f32) -> Result<Answer, Refusal> {
     check(load, present, request)?;
     let branch = present.branch;

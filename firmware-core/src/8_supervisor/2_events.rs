@@ -116,9 +116,7 @@ impl Events {
 
     /// From [`Self::bits`]; bits that stand for nothing are dropped.
     pub fn from_bits(bits: u32) -> Self {
-        let known = Self::ALL
-            .iter()
-            .fold(0, |bits, (event, _)| bits | event.0);
+        let known = Self::ALL.iter().fold(0, |bits, (event, _)| bits | event.0);
         Self(bits & known)
     }
 

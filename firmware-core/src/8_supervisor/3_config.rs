@@ -10,7 +10,7 @@
 //! KD (delay + tick/2 + 1.6/w) / J0 < 1.9
 //! ```
 //!
-//! [`Config::for_arm`] takes half of that, and a position gain whose corner `KP/KD` lies well below one over the same
+//! [`Config::for_arm`] takes six tenths of that, and a position gain whose corner `KP/KD` lies well below one over the same
 //! delay.
 
 use core::fmt;
@@ -28,9 +28,9 @@ pub const FILTER_DELAY: f32 = 1.6;
 /// Corner of a filter times the tick: the filter stays stable with a step twice as long.
 const FASTEST_FILTER: f32 = 0.3;
 /// Share of the ceiling that [`Config::for_arm`] takes.
-const CEILING_SHARE: f32 = 0.5;
+const CEILING_SHARE: f32 = 0.6;
 /// Corner of the position gain times the loop's delay that it takes.
-const CORNER_TIMES_DELAY: f32 = 0.25;
+const CORNER_TIMES_DELAY: f32 = 0.35;
 /// Share of m L^2 that a drive reflects when nobody says.
 const REFLECTED_SHARE: f32 = 0.02;
 
@@ -333,8 +333,8 @@ impl Settings {
                 crate::format::Drive::AppliedCouple => 0.03 * arm.energy_scale_j * rate,
             },
             pretension_n: limits.pretension_n,
-            brake_amplitude_rad: 0.15,
-            brake_eta: 2.0,
+            brake_amplitude_rad: 0.3,
+            brake_eta: 4.0,
             brake_deadband_rad_s: 0.05 * rate,
             rest_rate_rad_s: 0.08 * rate,
             rest_s: 2.0 * arm.unit_s,

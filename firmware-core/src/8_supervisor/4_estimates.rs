@@ -60,7 +60,7 @@ impl Angle {
         settings: &Settings,
         dt_s: f32,
     ) -> Events {
-        if reading.to_bits() == self.last.to_bits() {
+        if self.begun && reading.to_bits() == self.last.to_bits() {
             self.same_s += dt_s;
         } else {
             self.same_s = 0.0;
@@ -156,7 +156,7 @@ pub(super) fn affine(q0: f32, q1: f32, s: f32) -> f32 {
 pub(super) const GAUSS: [(f32, f32); 6] = [
     (0.033_765_24, 0.085_662_25),
     (0.169_395_31, 0.180_380_79),
-    (0.380_690_41, 0.233_956_97),
+    (0.380_690_4, 0.233_956_97),
     (0.619_309_6, 0.233_956_97),
     (0.830_604_7, 0.180_380_79),
     (0.966_234_76, 0.085_662_25),

@@ -3,6 +3,7 @@
 
 use super::config::Settings;
 use super::estimates::{Angle, Believable};
+use super::hold::within;
 use super::inputs_outputs::Measured;
 use super::{Events, Mode};
 use crate::choice::TensionPair;
@@ -178,7 +179,7 @@ impl Watch {
         });
         let share = dt_s / (settings.tension_lag_s + dt_s);
         let reach_n = settings.tension_rate_n_s * dt_s;
-        let follow = |from: f32, to: f32| from + ((to - from) * share).clamp(-reach_n, reach_n);
+        let follow = |from: f32, to: f32| from + within((to - from) * share, -reach_n, reach_n);
         expected.a_n = follow(expected.a_n, command.a_n);
         expected.b_n = follow(expected.b_n, command.b_n);
         let moving = settings.tension_off_per_rate * self.tip.rate.abs();
@@ -192,8 +193,8 @@ impl Watch {
             events |= Events::TENSION_NOT_FOLLOWING;
         }
         let least_n = settings.slack_fraction * settings.pretension_n;
-        // Only where the command has had time to tighten it; a moving tip slackens a tendon for a moment.
-        let slack = |read: f32, expected: f32| read < least_n && expected > 2.0 * least_n;
+        // A moving tip slackens a tendon for a moment.
+        let slack = |read: f32, expected: f32| read + moving < least_n && expected > 2.0 * least_n;
         let either = slack(read[0], expected.a_n) || slack(read[1], expected.b_n);
         if self.slack.lasts(either, dt_s, 2.0 * settings.tension_s) {
             events |= Events::TENDON_SLACK;

@@ -10,7 +10,7 @@
 //! what the table does not know of the payload, within a bound, and stands still while the couple is cut.
 
 use super::config::{ArmFacts, Settings};
-use super::estimates::Estimate;
+use super::estimates::{Estimate, GAUSS, affine, sin_cos};
 use crate::choice::TensionPair;
 use crate::table::Limits;
 
@@ -39,9 +39,7 @@ pub(super) fn towards(from: f32, to: f32, step: f32) -> f32 {
 
 /// `A (2/pi) atan(eta q1' sqrt(L/g))`: the tip's movement in phase with the swing.
 pub(super) fn in_phase(amplitude_rad: f32, eta: f32, rate_rad_s: f32, arm: &ArmFacts) -> f32 {
-    amplitude_rad
-        * core::f32::consts::FRAC_2_PI
-        * libm::atanf(eta * rate_rad_s * arm.unit_s)
+    amplitude_rad * core::f32::consts::FRAC_2_PI * libm::atanf(eta * rate_rad_s * arm.unit_s)
 }
 
 /// Movement of the tip that brakes a disturbance (rad).
@@ -62,6 +60,18 @@ pub(super) fn brake(now: &Estimate, settings: &Settings, arm: &ArmFacts) -> f32 
     )
 }
 
+/// Couple that the tip takes more, away from the rest state with mean angle `rest_q1`, because the arm is bent
+/// otherwise (N m). With affine curvature, `dU/dq0 = m g L (gamma (4 q0 - 6 q1) - int sin(phi + alpha) (3 s^2 - 2 s) ds)`; the
+/// weight is taken to be at the tip, and what that and two coordinates get wrong cancels at the rest state.
+pub(super) fn couple_off_rest(now: &Estimate, rest_q1: f32, arm: &ArmFacts) -> f32 {
+    let mut change = -6.0 * arm.gamma * (now.q1 - rest_q1);
+    for (s, share) in GAUSS {
+        let sin = |q1: f32| sin_cos(arm.tilt_rad + affine(now.q0, q1, s)).0;
+        change -= share * (sin(now.q1) - sin(rest_q1)) * s * (3.0 * s - 2.0);
+    }
+    arm.energy_scale_j * change
+}
+
 /// Position and rate feedback about a reference (N m).
 pub(super) fn feedback(now: &Estimate, reference: f32, settings: &Settings) -> f32 {
     settings.kp_n_m_per_rad * (reference - now.q0) - settings.kd_n_m_s_per_rad * now.q0_rate
@@ -70,7 +80,9 @@ pub(super) fn feedback(now: &Estimate, reference: f32, settings: &Settings) -> f
 /// The trim after `dt_s`. It stands still while the couple is cut and while the tip is far away.
 pub(super) fn trim(trim: f32, off_rad: f32, cut: bool, settings: &Settings, dt_s: f32) -> f32 {
     let most = settings.most_trim_n_m;
-    if cut || !(off_rad.abs() <= settings.reach_tolerance_rad) {
+    // Written so that NaN changes nothing.
+    let near = off_rad.abs() <= settings.reach_tolerance_rad;
+    if cut || !near {
         return trim;
     }
     within(

@@ -55,6 +55,11 @@ impl Listened {
         self.ticks += 1.0;
     }
 
+    /// How long it has listened, in steps of `dt_s` (s).
+    pub(super) fn time_s(&self, dt_s: f32) -> f32 {
+        self.ticks * dt_s
+    }
+
     fn mean(&self) -> Resting {
         let [q0, q1, couple_n_m] = self.sums.map(|sum| sum / self.ticks);
         Resting { q0, q1, couple_n_m }

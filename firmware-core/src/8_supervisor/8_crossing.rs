@@ -2,7 +2,8 @@
 //!
 //! *Inject*: `q0_ref = q0bar + A (2/pi) atan(eta q1' sqrt(L/g))`, in phase with the swing; first the tip is pulled away
 //! from the pass for a moment, and the amplitude grows by half when it takes long. *Lean*: the setpoint moves slowly
-//! past the fold where the branch ends. Both are over when the mean angle is beyond the pass and still on its way; no
+//! past the fold where the branch ends, and comes back when the arm has come to rest beyond: earlier, the pass would come back
+//! under the arm. Both are over when the mean angle is beyond the pass and still on its way; no
 //! guard asks for an energy.
 
 use super::config::{ArmFacts, Settings};
@@ -12,6 +13,9 @@ use super::inputs_outputs::CrossingRefusal;
 use crate::format::{Crossing, Drive, Method};
 use crate::load::Load;
 use crate::table::Slice;
+
+/// Time over which the tip is pulled away, in units of sqrt(L/g).
+const PULL_RAMP: f32 = 0.75;
 
 /// Where a crossing may begin.
 #[derive(Clone, Copy)]
@@ -47,7 +51,7 @@ pub(super) fn start(
             from: within(so_far.from, plan.setpoint_from, f32::INFINITY),
             to: within(so_far.to, f32::NEG_INFINITY, plan.setpoint_to),
         };
-        if !(both.from <= both.to) {
+        if both.from > both.to {
             return Err(CrossingRefusal::NoPlan);
         }
         common = Some(both);
@@ -89,12 +93,18 @@ fn nearest(
 }
 
 /// The plan of the slice with `payload_kg` for a crossing that begins at `held`.
-pub(super) fn plan(load: &Load<'_>, payload_kg: f32, from: u8, to: u8, held: f32) -> Option<Crossing> {
+pub(super) fn plan(
+    load: &Load<'_>,
+    payload_kg: f32,
+    from: u8,
+    to: u8,
+    held: f32,
+) -> Option<Crossing> {
     let mut slices = load.slices();
     let slice = slices.find(|slice| slice.payload_kg == payload_kg)?;
-    slice.crossings().find(|plan| {
-        plan.allowed && plan.from == from && plan.to == to && plan.covers(held)
-    })
+    slice
+        .crossings()
+        .find(|plan| plan.allowed && plan.from == from && plan.to == to && plan.covers(held))
 }
 
 /// A crossing under way.
@@ -109,6 +119,8 @@ pub(super) struct Under {
     pub(super) time_s: f32,
     /// Time for which the estimated tip speed has been above the limit (s).
     pub(super) fast_s: f32,
+    /// The arm has come to rest after the crossing, and the setpoint is on its way to where it is to be held.
+    pub(super) returning: bool,
     /// The amplitude now (rad).
     amplitude_rad: f32,
     /// Time since it last grew (s).
@@ -125,6 +137,7 @@ impl Under {
             payload_kg,
             time_s: 0.0,
             fast_s: 0.0,
+            returning: false,
             amplitude_rad: plan.amplitude_rad,
             since_s: 0.0,
         })
@@ -141,7 +154,9 @@ impl Under {
     ) -> f32 {
         let plan = &self.plan;
         if self.time_s < settings.pull_away * arm.unit_s {
-            return self.limited(base - self.way * self.amplitude_rad);
+            // Not at once: a tip that leaps slackens the tendon behind it.
+            let share = within(self.time_s / (PULL_RAMP * arm.unit_s), 0.0, 1.0);
+            return self.limited(base - self.way * share * self.amplitude_rad);
         }
         self.since_s += dt_s;
         if self.since_s > settings.grow_after * arm.unit_s {

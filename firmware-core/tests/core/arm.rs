@@ -18,8 +18,8 @@ use firmware_core::format::write::{
     BranchContents, Contents, SliceContents, StretchContents, buffer_len, write,
 };
 use firmware_core::{
-    BranchEntry, Crossing, Deducted, Drive, Header, Limit, Load, ParameterMap, Payload, Requirement,
-    Reserves, Stretch, SurveyBand, Table, Units, WorstError,
+    BranchEntry, Crossing, Deducted, Drive, Header, Limit, Load, ParameterMap, Payload,
+    Requirement, Reserves, Stretch, SurveyBand, Table, Units, WorstError,
 };
 
 use crate::parameter::{parameter, setpoint};

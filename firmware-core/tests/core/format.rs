@@ -3,7 +3,7 @@
 use firmware_core::format::write::{
     BranchContents, Contents, Part, SliceContents, StretchContents, WriteError, buffer_len, write,
 };
-use firmware_core::{BranchEntry, Drive, Table};
+use firmware_core::{BranchEntry, Drive, SurveyBand, Table};
 
 use crate::arm::{crc32, draft, draft_with_gap};
 
@@ -97,6 +97,8 @@ fn the_writer_says_what_the_format_cannot_hold() {
         payload_kg: 0.06,
         branches: &[branch],
         stretches: &[],
+        survey: SurveyBand::default(),
+        crossings: &[],
     };
     let contents = Contents {
         header: draft.header,

@@ -2,6 +2,7 @@
 
 mod arm;
 mod choice;
+mod crossings;
 mod damage;
 mod format;
 mod load;
@@ -12,5 +13,7 @@ mod payloads;
 mod pose;
 mod reserves;
 mod seed;
+mod supervisor;
+mod supervisor_random;
 mod tolerance;
 mod words;

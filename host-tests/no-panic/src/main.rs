@@ -9,6 +9,9 @@ use core::fmt::{self, Write};
 use core::hint::black_box;
 use core::panic::PanicInfo;
 
+use firmware_core::supervisor::{
+    self, Config, DriveFacts, Events, Input, Measured, Mode, Request, State,
+};
 use firmware_core::{
     Answer, Load, Payload, Pose, Present, Slice, Table, TensionPair, choose, which_branch,
 };
@@ -78,6 +81,50 @@ fn exercise(bytes: &[u8]) {
             Err(error) => say(&error),
         }
     }
+    match Config::for_arm(&table, &black_box(DriveFacts::default())) {
+        Ok(config) => control_loop(&table, &config),
+        Err(error) => say(&error),
+    }
+}
+
+fn control_loop(table: &Table<'_>, config: &Config) {
+    let mut settings = black_box(config.settings());
+    settings.most_tries = black_box(3);
+    let config = match Config::checked(settings, table) {
+        Ok(config) => config,
+        Err(error) => return say(&error),
+    };
+    let mut state = black_box(State::new());
+    let input = Input {
+        measured: Measured {
+            tip_angle_rad: black_box(0.0),
+            mid_angle_rad: black_box(0.0),
+            tension_a_n: black_box(0.0),
+            tension_b_n: black_box(0.0),
+        },
+        dt_s: black_box(0.0),
+        request: Request {
+            setpoint: black_box(0.0),
+            branch: black_box(None),
+            swing_permitted: black_box(true),
+            payload: black_box(Payload::Unknown),
+            stop: black_box(false),
+            rearm: black_box(true),
+        },
+    };
+    let output = supervisor::step(table, &config, &mut state, black_box(&input));
+    say(&output.events);
+    black_box((output, state.mode()));
+    let events = Events::from_bits(black_box(7)).with(black_box(Events::NONE));
+    for name in events.without(black_box(Events::NONE)).names() {
+        black_box(name);
+    }
+    black_box((events.contains(Events::NONE), events.any(events)));
+    black_box((events.is_empty(), events.bits()));
+    black_box(black_box(Mode::Hold).may_become(black_box(Mode::Survey)));
+    for way in supervisor::TRANSITIONS {
+        black_box(way.when);
+    }
 }
 
 fn lookups(slice: &Slice<'_>) {
@@ -114,6 +161,13 @@ fn stretches(slice: &Slice<'_>) {
         if let Some(reserves) = usable.reserves(black_box(0.0)) {
             say(&reserves);
         }
+    }
+    for crossing in slice.crossings() {
+        say(&crossing);
+        black_box((
+            crossing.covers(black_box(0.0)),
+            slice.survey.contains(black_box(1.0)),
+        ));
     }
     let setpoint: f32 = black_box(0.0);
     black_box((

@@ -1,12 +1,17 @@
 //! The whole arm in space: positions, strain, distance to keep-out regions, and what a lateral knock at the tip moves.
 
-use crate::arm_file::{Arm, KeepOut};
+use crate::arm_file::{Arm, KeepOut, Region};
 use crate::rest_states::modes::{ModalRod, angle_modes, legendre};
 use crate::rod::Rod;
 use nalgebra::{DMatrix, DVector};
 
 /// Intervals between the stations along the arm; even, for Simpson's rule.
 const INTERVALS: usize = 400;
+
+/// Inertia below this share of the largest is rounding.
+const NO_INERTIA: f64 = 1e-12;
+/// A direction with more than this share in motions without inertia meets no mass; less is rounding.
+const IDLE_SHARE: f64 = 1e-9;
 
 /// Stations along an arm in a number of modes.
 #[derive(Clone, Debug)]
@@ -121,13 +126,28 @@ impl Stations {
     }
 }
 
-/// Mass that an impulse along `direction` meets: `1 / (b' M^-1 b)`, in the units of `mass`; zero when the mass matrix is not
-/// positive definite.
+/// Mass that an impulse along `direction` meets: `1 / (b' M^-1 b)`, in the units of `mass`. Directions without inertia (a spine
+/// whose mass is neglected has them) take no part; zero when `direction` needs one of them.
 pub fn effective_mass(mass: &DMatrix<f64>, direction: &DVector<f64>) -> f64 {
-    match mass.clone().cholesky() {
-        Some(cholesky) => 1.0 / direction.dot(&cholesky.solve(direction)),
-        None => 0.0,
+    let eigen = mass.clone().symmetric_eigen();
+    let least_inertia = NO_INERTIA * eigen.eigenvalues.amax();
+    let (mut mobility, mut idle) = (0.0, 0.0);
+    for (inertia, motion) in eigen
+        .eigenvalues
+        .iter()
+        .zip(eigen.eigenvectors.column_iter())
+    {
+        let share = motion.dot(direction).powi(2);
+        if *inertia > least_inertia {
+            mobility += share / inertia;
+        } else {
+            idle += share;
+        }
     }
+    if idle > IDLE_SHARE * direction.norm_squared() || mobility == 0.0 {
+        return 0.0;
+    }
+    1.0 / mobility
 }
 
 impl Shape {
@@ -153,15 +173,21 @@ impl Shape {
             .iter()
             .fold(0.0, |largest: f64, c| largest.max(c.abs()))
             / length_m;
-        // Between two stations the arm can bulge by this much.
-        let bulge_m = step_m * step_m * curvature / 8.0;
         keep_out
             .iter()
             .enumerate()
             .map(|(number, keep_out)| {
                 let at = |p: &[f64; 2]| keep_out.region.clearance_m(p.map(|x| x * length_m));
                 let nearest = self.positions.iter().map(at).fold(f64::INFINITY, f64::min);
-                (nearest - bulge_m, number)
+                let border = match keep_out.region {
+                    Region::HalfPlane { .. } => 0.0,
+                    Region::Disc { radius_m, .. } => 1.0 / (nearest + radius_m).max(step_m),
+                };
+                // Between two stations arm and border can bulge towards each other by this much.
+                (
+                    nearest - step_m * step_m * (curvature + border) / 8.0,
+                    number,
+                )
             })
             .min_by(|a, b| a.0.total_cmp(&b.0))
     }

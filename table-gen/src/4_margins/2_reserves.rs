@@ -31,7 +31,7 @@ impl Grows {
 /// Softest arm that the largest number of modes resolves well enough for a reserve.
 const SOFTEST_GAMMA: f64 = 0.012;
 /// First and longest step along the curve of (free modes, parameter).
-const STEPS: [f64; 2] = [0.05, 1.0];
+const STEPS: [f64; 2] = [0.1, 1.5];
 /// Shortest step: what cannot be followed with it ends there.
 const SHORTEST_STEP: f64 = 1e-6;
 /// Halvings of the step in which stability is lost: parameter to about 1e-9.
@@ -104,7 +104,7 @@ impl<'a> Reserve<'a> {
                 return None;
             }
             point = next;
-            step = (1.5 * step).min(STEPS[1]);
+            step = (2.0 * step).min(STEPS[1]);
         }
     }
 

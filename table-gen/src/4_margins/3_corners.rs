@@ -53,7 +53,7 @@ pub struct CornerArm {
 pub enum Levels {
     /// The nominal arm alone.
     Nominal,
-    /// Both ends of each tolerance, and the nominal arm: nine corners.
+    /// Both ends of each tolerance together, and the arm of each payload slice: at most eleven corners.
     Ends,
     /// Both ends and the middle of each: 27 corners.
     EndsAndMiddle,

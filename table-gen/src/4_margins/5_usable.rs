@@ -307,9 +307,11 @@ impl Search<'_, '_> {
     }
 
     /// Worst reserves over the slice's corners.
-    fn worst(&self, assessed: &Assessed) -> Reserves {
+    fn worst(&self, assessed: &Assessed) -> Fine {
         let mut worst: Reserves = [None; 9];
+        let mut bounded = [0; 9];
         worst[PAYLOAD] = assessed.payload_reserve.map(|(reserve, _)| reserve);
+        bounded[PAYLOAD] = usize::from(worst[PAYLOAD].is_some());
         for (corner, look) in self.assessor.corners().arms.iter().zip(&assessed.margins) {
             let Look::There(margins) = look else { continue };
             if corner.slice != self.slice {
@@ -318,11 +320,19 @@ impl Search<'_, '_> {
             for (place, value) in reserves(margins).into_iter().enumerate() {
                 if let Some(value) = value {
                     worst[place] = Some(worse(place, worst[place], value));
+                    bounded[place] += 1;
                 }
             }
         }
-        worst
+        Fine { worst, bounded }
     }
+}
+
+/// Worst reserves at one of the finer setpoints.
+struct Fine {
+    worst: Reserves,
+    /// In how many corners each has a bound.
+    bounded: [usize; 9],
 }
 
 fn range_end(setpoint: f64) -> EndLimit {
@@ -357,30 +367,54 @@ fn worse(place: usize, a: Option<f64>, b: f64) -> f64 {
     }
 }
 
-/// Every other of the `fine` reserves, made worse by what linear interpolation between them would overstate in the middle.
-fn understated(fine: &[Reserves]) -> Vec<Reserves> {
-    let mut kept: Vec<Reserves> = fine.iter().step_by(2).copied().collect();
-    let original = kept.clone();
-    for (k, middle) in fine.iter().skip(1).step_by(2).enumerate() {
-        for place in 0..middle.len() {
-            let Some(truth) = middle[place] else { continue };
-            // Between a bounded and an unbounded point the firmware takes the bounded one.
-            let said = match (original[k][place], original[k + 1][place]) {
-                (Some(a), Some(b)) => Some(0.5 * (a + b)),
-                (one, other) => one.or(other),
-            };
-            for end in [k, k + 1] {
-                let lowered = match (said, original[end][place]) {
-                    (Some(said), Some(own)) if place == STRAIN => {
-                        own + OVERSTATED * (truth - said).max(0.0)
-                    }
-                    (Some(said), Some(own)) => own - OVERSTATED * (said - truth).max(0.0),
-                    (None, _) => truth,
-                    (Some(_), None) => continue,
-                };
-                kept[end][place] = Some(worse(place, kept[end][place], lowered));
+/// Every other of the `fine` reserves, made worse by what linear interpolation between them would overstate.
+fn understated(fine: &[Fine]) -> Vec<Reserves> {
+    let mut kept: Vec<Reserves> = fine.iter().step_by(2).map(|f| f.worst).collect();
+    for k in 0..kept.len() - 1 {
+        let lowered: [[Option<f64>; 2]; 9] =
+            std::array::from_fn(|place| lowered(fine, 2 * k, place));
+        for (end, point) in kept[k..=k + 1].iter_mut().enumerate() {
+            for (place, reserve) in point.iter_mut().enumerate() {
+                if let Some(lowered) = lowered[place][end] {
+                    *reserve = Some(worse(place, *reserve, lowered));
+                }
             }
         }
     }
     kept
+}
+
+/// What one reserve has to be at both ends of the interval that begins at the fine point `from`, so that the straight line
+/// between them overstates nothing.
+fn lowered(fine: &[Fine], from: usize, place: usize) -> [Option<f64>; 2] {
+    let points = [0, 1, 2].map(|i| &fine[from + i]);
+    let values @ [left, truth, right] = points.map(|f| f.worst[place]);
+    let bounded = points.map(|f| f.bounded[place]);
+    // Where a corner gains or loses its bound on the way, its own value goes on past the last point that shows it: the least
+    // of the three, less the steepest fall seen beside the interval, holds all along.
+    if bounded[0] != bounded[1] || bounded[1] != bounded[2] {
+        let least = values.into_iter().flatten().min_by(f64::total_cmp);
+        return [least.map(|least| least - OVERSTATED * steepest_fall(fine, from, place)); 2];
+    }
+    let (Some(left), Some(truth), Some(right)) = (left, truth, right) else {
+        return [None; 2];
+    };
+    let overstated = 0.5 * (left + right) - truth;
+    let change = match place {
+        STRAIN => OVERSTATED * (-overstated).max(0.0),
+        _ => -OVERSTATED * overstated.max(0.0),
+    };
+    [Some(left + change), Some(right + change)]
+}
+
+/// How much a reserve falls over one interval towards the one that begins at the fine point `from`, on either side of it.
+fn steepest_fall(fine: &[Fine], from: usize, place: usize) -> f64 {
+    let fall = |outer: Option<usize>, inner: usize| -> f64 {
+        let value = |at: usize| fine.get(at).and_then(|f| f.worst[place]);
+        match (outer.and_then(value), value(inner)) {
+            (Some(outer), Some(inner)) => (outer - inner).max(0.0),
+            _ => 0.0,
+        }
+    };
+    fall(from.checked_sub(2), from).max(fall(Some(from + 4), from + 2))
 }

@@ -1,5 +1,7 @@
 //! From rest states to the bytes the firmware reads, and the errors it will make with them.
 
+#[path = "7_crossings.rs"]
+pub mod crossings;
 #[path = "3_knots.rs"]
 mod knots;
 #[path = "2_labels.rs"]

@@ -44,7 +44,13 @@ pub(super) struct CrossCheck {
 
 impl CrossCheck {
     /// Compares one frame: `judged` are the model's states and `states` the rod's at `setpoint` (SI).
-    pub(super) fn frame(&mut self, rod: &Rod, setpoint: f64, judged: &[Judged], states: &[FrameState]) {
+    pub(super) fn frame(
+        &mut self,
+        rod: &Rod,
+        setpoint: f64,
+        judged: &[Judged],
+        states: &[FrameState],
+    ) {
         let frame = self.frames;
         self.frames += 1;
         if judged.iter().any(|j| j.confirmed == Some(false)) {
@@ -72,10 +78,18 @@ impl CrossCheck {
         }
     }
 
-    fn add(&mut self, frame: usize, branch: Option<usize>, wrong: Wrong, setpoint: f64, ratio: f64) {
-        let open = self.runs.iter_mut().find(|run| {
-            run.branch == branch && run.wrong == wrong && run.last_frame + 1 >= frame
-        });
+    fn add(
+        &mut self,
+        frame: usize,
+        branch: Option<usize>,
+        wrong: Wrong,
+        setpoint: f64,
+        ratio: f64,
+    ) {
+        let open = self
+            .runs
+            .iter_mut()
+            .find(|run| run.branch == branch && run.wrong == wrong && run.last_frame + 1 >= frame);
         match open {
             Some(run) => {
                 run.last_frame = frame;
@@ -103,17 +117,22 @@ impl CrossCheck {
             .map(|run| Disagreement {
                 branch: run
                     .branch
-                    .map_or("none of the rod's".to_string(), |branch| format!("branch {branch}")),
+                    .map_or("none of the rod's".to_string(), |branch| {
+                        format!("branch {branch}")
+                    }),
                 setpoints: words::range(drive, run.setpoints),
                 what: match run.wrong {
-                    Wrong::FalseFriend => "calls a rest state stable that the rod does not have".to_string(),
+                    Wrong::FalseFriend => {
+                        "calls a rest state stable that the rod does not have".to_string()
+                    }
                     Wrong::Missing => "has no such rest state".to_string(),
-                    Wrong::TooHigh | Wrong::TooLow => format!(
-                        "barrier {} times the rod's",
-                        times(run.ratios)
-                    ),
+                    Wrong::TooHigh | Wrong::TooLow => {
+                        format!("barrier {} times the rod's", times(run.ratios))
+                    }
                     Wrong::NoPass => "sees no pass out of this well; the rod has one".to_string(),
-                    Wrong::ExtraPass => "sees a pass out of this well; the rod has none".to_string(),
+                    Wrong::ExtraPass => {
+                        "sees a pass out of this well; the rod has none".to_string()
+                    }
                 },
             })
             .collect()
@@ -131,7 +150,11 @@ fn times([least, most]: [f64; 2]) -> String {
         }
     };
     let (least, most) = (say(least), say(most));
-    if least == most { least } else { format!("{least} to {most}") }
+    if least == most {
+        least
+    } else {
+        format!("{least} to {most}")
+    }
 }
 
 /// The model's counterpart of the rod's stable `state`: no unstable state of the model lies between them, and each is the other's

@@ -1,10 +1,10 @@
 //! Solves what the page shows: curves over the setpoint, and shapes and energies at the slider's setpoints.
 
+use super::cross_check::CrossCheck;
 use super::data::{
     Arm, Branch, BranchPoint, Drive, End, FalseFriend, Fold, Frame, FrameState, Limit, ReportData,
     Stretch, WorstError,
 };
-use super::cross_check::CrossCheck;
 use super::margins::Margins;
 use super::{verdict, words};
 use crate::arm_file;
@@ -159,7 +159,12 @@ impl Gatherer<'_> {
         let slices = self.tabulation.corners.payloads_kg.len();
         let runs = self.tabulation.usable.any_payload(number, slices);
         runs.iter()
-            .map(|([from, to], limits)| Stretch { from: *from, to: *to, from_why: why(&limits[0]), to_why: why(&limits[1]) })
+            .map(|([from, to], limits)| Stretch {
+                from: *from,
+                to: *to,
+                from_why: why(&limits[0]),
+                to_why: why(&limits[1]),
+            })
             .collect()
     }
 

@@ -75,14 +75,12 @@ impl<'a> Margins<'a> {
                 points: trace
                     .points
                     .iter()
+                    .filter(|(setpoint, _)| !self.is_at_fold(*setpoint))
                     .map(|(setpoint, findings)| (*setpoint, value(findings)))
                     .collect(),
             };
             Reserve {
-                key: kind
-                    .key_and_unit(&self.tabulation.arm.drive)
-                    .0
-                    .to_string(),
+                key: kind.key_and_unit(&self.tabulation.arm.drive).0.to_string(),
                 name: words::name(kind).to_string(),
                 unit: unit.to_string(),
                 limit: kind.limit(&self.tabulation.arm) * factor,
@@ -91,6 +89,16 @@ impl<'a> Margins<'a> {
             }
         };
         self.kinds().map(reserve).collect()
+    }
+
+    /// At a fold itself no state can be followed into the corners, and what is left says nothing about them.
+    fn is_at_fold(&self, setpoint: f64) -> bool {
+        let nominal = &self.tabulation.corners.nominal;
+        let at = nominal.rod.setpoint_from_si(setpoint);
+        nominal
+            .folds
+            .iter()
+            .any(|fold| (fold.point.setpoint - at).abs() < 1e-6)
     }
 
     pub(super) fn strips(&self) -> Vec<Strip> {
@@ -126,7 +134,11 @@ impl<'a> Margins<'a> {
             kind: RowKind::Payload,
             runs: self.usable_with(trace.label, slice),
         };
-        let slices = if payloads.len() > 1 { payloads.len() } else { 0 };
+        let slices = if payloads.len() > 1 {
+            payloads.len()
+        } else {
+            0
+        };
         requirements
             .chain([all])
             .chain((0..slices).map(payload))
@@ -162,8 +174,8 @@ impl<'a> Margins<'a> {
             return Some(unknown());
         };
         let after = trace.points.partition_point(|point| point.0 < setpoint);
-        let [below, above] = [after.saturating_sub(1), after.min(trace.points.len() - 1)]
-            .map(|k| &trace.points[k]);
+        let [below, above] =
+            [after.saturating_sub(1), after.min(trace.points.len() - 1)].map(|k| &trace.points[k]);
         let x = if above.0 > below.0 {
             (setpoint - below.0) / (above.0 - below.0)
         } else {
@@ -180,9 +192,16 @@ impl<'a> Margins<'a> {
             !runs.iter().any(usable)
         };
         // So near an end that interpolation sees all requirements met, the neighbour beyond says which is not.
-        let beyond = || [below, above].into_iter().find_map(|p| p.1.iter().find(|f| !f.holds));
+        let beyond = || {
+            [below, above]
+                .into_iter()
+                .find_map(|p| p.1.iter().find(|f| !f.holds))
+        };
         let first = between.iter().find(fails).or_else(beyond);
-        Some(first.map_or_else(unknown, |finding| words::shortfall(finding, self.drive)))
+        // It stands in a narrow column, where it must be free to wrap.
+        Some(first.map_or_else(unknown, |finding| {
+            words::shortfall(finding, self.drive).replace('\u{a0}', " ")
+        }))
     }
 
     /// The stable state `from` of branch `label` in the corner with the least clearance or, without keep-out regions, the
@@ -207,8 +226,9 @@ impl<'a> Margins<'a> {
         let shape = self.stations.shape(&c, rod.tilt_rad);
         let what = match shape.clearance_m(&arm.keep_out, rod.length_m) {
             Some((clearance, region)) => format!(
-                "{} from {}",
-                words::quantity(Kind::Clearance, self.drive, clearance),
+                "{} {} {}",
+                words::quantity(Kind::Clearance, self.drive, clearance.abs()),
+                if clearance < 0.0 { "inside" } else { "from" },
                 arm.keep_out[region].name
             ),
             None => format!(

@@ -14,9 +14,9 @@ mod verdict;
 mod words;
 
 pub use data::{
-    Arm, Branch, BranchPoint, Disagreement, Drive, End, FalseFriend, Fold, Frame, FrameState, Limit,
-    ReportData, Reserve, ReserveCurve, RowKind, Stretch, Strip, StripRow, Verdict, VerdictStretch,
-    WorstError, WorstShape,
+    Arm, Branch, BranchPoint, Disagreement, Drive, End, FalseFriend, Fold, Frame, FrameState,
+    Limit, ReportData, Reserve, ReserveCurve, RowKind, Stretch, Strip, StripRow, Verdict,
+    VerdictStretch, WorstError, WorstShape,
 };
 
 pub use gather::gather;

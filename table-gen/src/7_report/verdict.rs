@@ -42,7 +42,11 @@ pub(super) fn verdict(margins: &Margins) -> Result<Verdict, RestStatesError> {
                     end(margins, label, ends[0], &limits[0], -1.0)?,
                     end(margins, label, ends[1], &limits[1], 1.0)?,
                 ],
-                by_payload: if place == 0 { by_payload.clone() } else { vec![] },
+                by_payload: if place == 0 {
+                    by_payload.clone()
+                } else {
+                    vec![]
+                },
             });
         }
         if is_none {
@@ -55,7 +59,8 @@ pub(super) fn verdict(margins: &Margins) -> Result<Verdict, RestStatesError> {
         }
     }
     let summary = if where_used.is_empty() {
-        "This arm may not be used at any setpoint: no rest state meets all requirements.".to_string()
+        "This arm may not be used at any setpoint: no rest state meets all requirements."
+            .to_string()
     } else {
         format!("This arm may be used {}.", where_used.join(", and "))
     };
@@ -88,7 +93,10 @@ fn holds_for(margins: &Margins) -> String {
     if parts.is_empty() {
         format!("With {last}.")
     } else {
-        format!("With {} and {last}, all at their worst together.", parts.join(", "))
+        format!(
+            "With {} and {last}, all at their worst together.",
+            parts.join(", ")
+        )
     }
 }
 
@@ -130,12 +138,21 @@ fn end(
         .and_then(|corner| margins.nearest_region(label, at, &corner))
         .map_or(String::new(), |name| format!(" from {name}"));
     let corner = corner.map_or(String::new(), |corner| {
-        format!("; worst {}", words::corner(&corner, &margins.tabulation.arm))
+        format!(
+            "; worst {}",
+            words::corner(&corner, &margins.tabulation.arm)
+        )
     });
     if kind == Kind::Stable {
-        return Ok(format!("{side} {place} it is no longer stable in every corner{corner}."));
+        return Ok(format!(
+            "{side} {place} it is no longer stable in every corner{corner}."
+        ));
     }
-    let word = if kind.is_upper_limit() { "allowed" } else { "required" };
+    let word = if kind.is_upper_limit() {
+        "allowed"
+    } else {
+        "required"
+    };
     Ok(format!(
         "{side} {place} the {} fails: {}{region} at the end, {} {word}{corner}.",
         words::name(kind),
@@ -171,7 +188,9 @@ fn failing(trace: &Trace) -> String {
         .map(|(fraction, kind)| {
             let percent = words::round(100.0 * fraction);
             match kind {
-                Kind::Stable => format!("stability in every corner is missing over {percent}\u{a0}%"),
+                Kind::Stable => {
+                    format!("stability in every corner is missing over {percent}\u{a0}%")
+                }
                 _ => format!("{} fails over {percent}\u{a0}%", words::name(*kind)),
             }
         })
@@ -250,7 +269,10 @@ fn helps(margins: &Margins, found: &verdict::Verdict) -> Vec<String> {
         };
         let to = tried.iter().filter_map(|t| t.width).max_by(f64::total_cmp);
         let up_to = match change {
-            Change::Stiffness => format!("A stiffer spine, up to {} times as stiff", number(most.factor)),
+            Change::Stiffness => format!(
+                "A stiffer spine, up to {} times as stiff",
+                number(most.factor)
+            ),
             Change::Payload => format!(
                 "A lighter payload, down to {}\u{a0}% of its range",
                 words::round(100.0 * most.factor)

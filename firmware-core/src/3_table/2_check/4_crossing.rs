@@ -16,11 +16,7 @@ pub(super) fn band(slice: u16, band: SurveyBand) -> Result<(), Fault> {
     }
 }
 
-pub(super) fn check(
-    found: &Crossing,
-    limits: &Limits,
-    own: Own<'_>,
-) -> Result<(), CrossingFault> {
+pub(super) fn check(found: &Crossing, limits: &Limits, own: Own<'_>) -> Result<(), CrossingFault> {
     if limits.drive != Drive::HeldTip {
         return Err(CrossingFault::Drive);
     }
@@ -56,13 +52,21 @@ fn ends(found: &Crossing, own: Own<'_>) -> Result<(), CrossingFault> {
     };
     let (from, to) = (stable(found.from)?, stable(found.to)?);
     for (holds, field, value) in [
-        (from.covers(found.setpoint_from), "setpoint_from", found.setpoint_from),
+        (
+            from.covers(found.setpoint_from),
+            "setpoint_from",
+            found.setpoint_from,
+        ),
         (
             from.covers(found.setpoint_to) && found.setpoint_from <= found.setpoint_to,
             "setpoint_to",
             found.setpoint_to,
         ),
-        (to.covers(found.rest_setpoint), "rest_setpoint", found.rest_setpoint),
+        (
+            to.covers(found.rest_setpoint),
+            "rest_setpoint",
+            found.rest_setpoint,
+        ),
     ] {
         if !holds {
             return Err(CrossingFault::Value { field, value });
@@ -84,7 +88,11 @@ fn values(found: &Crossing, limits: &Limits) -> Result<(), CrossingFault> {
             amplitude,
         ),
         (found.eta > 0.0, "eta", found.eta),
-        (sound(found.lean_setpoint), "lean_setpoint", found.lean_setpoint),
+        (
+            sound(found.lean_setpoint),
+            "lean_setpoint",
+            found.lean_setpoint,
+        ),
         (found.longest_s > 0.0, "longest_s", found.longest_s),
         (
             travel > 0.0 && travel + SLACK >= amplitude && (!leans || travel + SLACK >= lean),
@@ -102,7 +110,11 @@ fn values(found: &Crossing, limits: &Limits) -> Result<(), CrossingFault> {
             found.most_tip_speed_m_s,
         ),
         (true, "lowest_clearance_m", found.lowest_clearance_m),
-        (found.peak_couple_n_m >= 0.0, "peak_couple_n_m", found.peak_couple_n_m),
+        (
+            found.peak_couple_n_m >= 0.0,
+            "peak_couple_n_m",
+            found.peak_couple_n_m,
+        ),
         (
             found.peak_tip_speed_m_s >= 0.0,
             "peak_tip_speed_m_s",

@@ -75,7 +75,7 @@ function drawShapes(frame) {
   const bar = niceLength(90 / scale);
   const rule = svg.append("g").attr("stroke", "#1c2228").attr("stroke-width", 1.5);
   rule.append("path").attr("fill", "none").attr("d", `M4,${ground - 5}v5h${bar * scale}v-5`);
-  svg.append("text").attr("x", 4 + (bar * scale) / 2).attr("y", ground - 8).attr("text-anchor", "middle")
+  svg.append("text").attr("x", Math.max(28, 4 + (bar * scale) / 2)).attr("y", ground - 8).attr("text-anchor", "middle")
     .text(bar < 1 ? `${Math.round(bar * 1e3)} mm` : `${bar} m`);
   const g = width - 16;
   rule.append("path").attr("fill", "none").attr("d", `M${g},${ground - 34}v32m-5,-8l5,8l5,-8`);
