@@ -10,4 +10,5 @@ pub mod arms;
 pub mod program;
 pub mod random_arms;
 pub mod reference;
+pub mod rehearsal;
 pub mod tolerances;

@@ -1,7 +1,9 @@
 //! The whole way from an arm file to its outputs: what a build script calls.
 
-use crate::arm_file::{self, Arm, ArmFileError};
+use crate::arm_file::{self, Arm, ArmFileError, Drive};
+use crate::plan::swing::{Plans, plan_or_kept};
 use crate::report;
+use crate::table::crossings::with_crossings;
 use crate::table::readable::Readable;
 use crate::table::{Tabulation, TabulationError, tabulate};
 use firmware_core::Table;
@@ -88,18 +90,59 @@ pub struct Outputs {
     pub table_json: String,
     /// The report page.
     pub report_html: String,
+    /// The crossings in the table, with why some are not allowed.
+    pub plans: Plans,
 }
+
+/// Shares of the progress that table, plan and report take, when there is a plan.
+const SHARES: [f64; 2] = [0.1, 0.85];
 
 /// Names of the three files.
 const FILE_NAMES: [&str; 3] = ["table.bin", "table.json", "report.html"];
 
 impl Outputs {
-    /// Makes the outputs of `arm`. `progress` is called with the fraction done, 0 to 1.
+    /// Makes the outputs of `arm`, whose table then has no crossings. `progress` is called with the fraction done, 0 to 1.
     ///
     /// # Errors
     /// [`BuildError::Tabulation`].
     pub fn make(arm: &Arm, progress: &(dyn Fn(f64) + Sync)) -> Result<Self, BuildError> {
         let tabulation = tabulate(arm, &|done| progress(0.7 * done))?;
+        Self::of(tabulation, Plans::default(), progress)
+    }
+
+    /// The same with crossings, where the arm file has a `[swing]` section. They are planned once, which takes minutes, and kept
+    /// in `plans`, a directory that is made if need be.
+    ///
+    /// # Errors
+    /// [`BuildError::Tabulation`]; [`BuildError::Output`] when the plan cannot be kept.
+    pub fn make_planned(
+        arm: &Arm,
+        plans: &Path,
+        progress: &(dyn Fn(f64) + Sync),
+    ) -> Result<Self, BuildError> {
+        if arm.swing.is_none() || !matches!(arm.drive, Drive::HeldTip { .. }) {
+            return Self::make(arm, progress);
+        }
+        let mut tabulation = tabulate(arm, &|done| progress(SHARES[0] * done))?;
+        let planning = |done| progress(SHARES[0] + (SHARES[1] - SHARES[0]) * done);
+        let plans = plan_or_kept(
+            arm,
+            &tabulation.corners,
+            &tabulation.usable,
+            &tabulation.bytes,
+            plans,
+            &planning,
+        )?;
+        let by_slice = plans.by_slice(tabulation.corners.payloads_kg.len());
+        tabulation.bytes = with_crossings(&tabulation.bytes, &by_slice)?;
+        Self::of(tabulation, plans, progress)
+    }
+
+    fn of(
+        tabulation: Tabulation,
+        plans: Plans,
+        progress: &(dyn Fn(f64) + Sync),
+    ) -> Result<Self, BuildError> {
         let table = Table::new(&tabulation.bytes).map_err(TabulationError::Refused)?;
         let readable = Readable::new(&table).map_err(TabulationError::Refused)?;
         let table_json =
@@ -112,6 +155,7 @@ impl Outputs {
             tabulation,
             table_json,
             report_html,
+            plans,
         })
     }
 

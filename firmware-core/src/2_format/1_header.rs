@@ -30,6 +30,8 @@ pub struct WorstError {
     pub couple_n_m: f32,
     /// Of the energy (J).
     pub energy_j: f32,
+    /// Of the barrier (J).
+    pub barrier_j: f32,
     /// Of the tip position, either coordinate (m).
     pub tip_m: f32,
     /// Of the restoring stiffness (N m/rad).

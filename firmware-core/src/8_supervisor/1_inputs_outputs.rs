@@ -34,7 +34,7 @@ pub struct Request {
     /// Stop now.
     pub stop: bool,
     /// Leave [`Mode::Stopped`]. Counts when it changes from false to true, and stands for as long as
-    /// [`super::Config::rearm_s`] says if the arm is not at rest yet; it never counts twice.
+    /// [`super::Settings::rearm_s`] says if the arm is not at rest yet; it never counts twice.
     pub rearm: bool,
 }
 

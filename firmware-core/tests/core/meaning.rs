@@ -51,7 +51,7 @@ fn header_values_out_of_range() {
         ("offset_m", |d, v| d.header.offset_m = v),
         ("max_tension_n", |d, v| d.header.max_tension_n = v),
     ];
-    let not_negative: [(&str, Change); 10] = [
+    let not_negative: [(&str, Change); 11] = [
         ("nominal_payload_kg", |d, v| d.header.nominal_payload_kg = v),
         ("pretension_n", |d, v| d.header.pretension_n = v),
         ("worst_error.mean_angle_rad", |d, v| {
@@ -67,6 +67,9 @@ fn header_values_out_of_range() {
             d.header.worst_error.energy_j = v
         }),
         ("worst_error.tip_m", |d, v| d.header.worst_error.tip_m = v),
+        ("worst_error.barrier_j", |d, v| {
+            d.header.worst_error.barrier_j = v;
+        }),
         ("worst_error.restoring_n_m_per_rad", |d, v| {
             d.header.worst_error.restoring_n_m_per_rad = v;
         }),

@@ -445,3 +445,8 @@ fn stopped_is_left_only_by_arming() {
         assert!(mode.may_become(Mode::Stopped));
     }
 }
+
+#[test]
+fn the_state_is_small() {
+    assert!(size_of::<State>() <= 512, "{}", size_of::<State>());
+}

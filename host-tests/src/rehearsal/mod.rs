@@ -6,8 +6,8 @@
 //! [`random_cases`] runs many drawn cases and counts how they end.
 
 pub mod closed_loop;
-mod place;
 pub mod page;
+mod place;
 pub mod random_cases;
 pub mod scenario;
 pub mod stage;

@@ -40,7 +40,7 @@
 //! [expect]                     # at the end
 //! mode = "hold"
 //! branch = 0
-//! refused = "no-plan"          # why the crossing to the wanted branch is not made
+//! refused = ["no-plan"]        # why the crossing to the wanted branch is not made, any of these
 //! tip_angle_deg = -30.0        # where the tip really is, within within_deg (2 when left out)
 //! must = ["knocked over"]      # events by their names
 //! must_not = ["timed out"]
@@ -172,8 +172,8 @@ pub struct Expected {
     pub mode: Mode,
     /// The branch, when it matters.
     pub branch: Option<u8>,
-    /// Why the crossing is not made, when it matters; its name.
-    pub refused: Option<&'static str>,
+    /// Why the crossing is not made: one of these names; empty when it does not matter.
+    pub refused: Vec<&'static str>,
     /// Where the tip really is and how far off it may be (rad), when it matters.
     pub tip: Option<(f64, f64)>,
     /// Events that must have occurred.
@@ -255,7 +255,8 @@ struct WrittenAction {
 struct WrittenExpected {
     mode: Spanned<String>,
     branch: Written<i64>,
-    refused: Written<String>,
+    #[serde(default)]
+    refused: Vec<Spanned<String>>,
     tip_angle_deg: Written<f64>,
     within_deg: Written<f64>,
     #[serde(default)]
@@ -282,8 +283,7 @@ pub fn read(path: &Path, arm: &Arm) -> Result<Scenario, ScenarioError> {
 /// One message with file, line and column.
 pub fn parse(text: &str, file_name: &str, arm: &Arm) -> Result<Scenario, ScenarioError> {
     let page = Page { file_name, text };
-    let written: WrittenScenario =
-        toml::from_str(text).map_err(|error| page.toml_fault(&error))?;
+    let written: WrittenScenario = toml::from_str(text).map_err(|error| page.toml_fault(&error))?;
     Checking { page, arm }.scenario(&written)
 }
 
@@ -293,8 +293,7 @@ pub fn parse(text: &str, file_name: &str, arm: &Arm) -> Result<Scenario, Scenari
 /// The first file that is wrong, or the directory cannot be read or holds none.
 pub fn read_all(directory: &Path, arm: &Arm) -> Result<Vec<Scenario>, ScenarioError> {
     let name = directory.display().to_string();
-    let unreadable =
-        |error| ScenarioError::of_file(&name, format_args!("cannot be read: {error}"));
+    let unreadable = |error| ScenarioError::of_file(&name, format_args!("cannot be read: {error}"));
     let mut paths = Vec::new();
     for entry in std::fs::read_dir(directory).map_err(unreadable)? {
         let path = entry.map_err(unreadable)?.path();
@@ -322,10 +321,9 @@ impl Checking<'_> {
         let start = written.start.get_ref();
         let Some(setpoint) = self.setpoint(&start.setpoint_deg, &start.setpoint_n_m)? else {
             let key = self.setpoint_key();
-            return Err(self.page.fault(
-                written.start.span(),
-                format_args!("[start] lacks {key}"),
-            ));
+            return Err(self
+                .page
+                .fault(written.start.span(), format_args!("[start] lacks {key}")));
         };
         let mut actions = Vec::new();
         for action in &written.actions {
@@ -360,13 +358,43 @@ impl Checking<'_> {
         let degrees = |value: &Written<f64>, key, most: f64, default: f64| {
             number(value, key, "deg", -most..=most, default.to_degrees()).map(f64::to_radians)
         };
-        let noise = number(&written.angle_noise_deg, "angle_noise_deg", "deg", 0.0..=20.0, 0.0)?;
+        let noise = number(
+            &written.angle_noise_deg,
+            "angle_noise_deg",
+            "deg",
+            0.0..=20.0,
+            0.0,
+        )?;
         Ok(RealArm {
-            payload_kg: number(&written.payload_kg, "payload_kg", "kg", 0.0..=1e4, nominal.payload_kg)?,
-            stiffness_factor: number(&written.stiffness_factor, "stiffness_factor", "", 0.1..=10.0, 1.0)?,
-            damping_factor: number(&written.damping_factor, "damping_factor", "", 0.01..=10.0, 1.0)?,
+            payload_kg: number(
+                &written.payload_kg,
+                "payload_kg",
+                "kg",
+                0.0..=1e4,
+                nominal.payload_kg,
+            )?,
+            stiffness_factor: number(
+                &written.stiffness_factor,
+                "stiffness_factor",
+                "",
+                0.1..=10.0,
+                1.0,
+            )?,
+            damping_factor: number(
+                &written.damping_factor,
+                "damping_factor",
+                "",
+                0.01..=10.0,
+                1.0,
+            )?,
             tilt_off_rad: degrees(&written.tilt_off_deg, "tilt_off_deg", 90.0, 0.0)?,
-            friction: number(&written.friction, "friction", "", 0.0..=0.95, nominal.friction)?,
+            friction: number(
+                &written.friction,
+                "friction",
+                "",
+                0.0..=0.95,
+                nominal.friction,
+            )?,
             angle_noise_rad: match written.angle_noise_deg {
                 Some(_) => noise.to_radians(),
                 None => nominal.angle_noise_rad,
@@ -374,9 +402,15 @@ impl Checking<'_> {
             angle_bias_rad: degrees(&written.angle_bias_deg, "angle_bias_deg", 45.0, 0.0)?,
             delay_ticks: match &written.delay_ticks {
                 None => nominal.delay_ticks,
-                Some(ticks) => usize::try_from(*ticks.get_ref()).ok().filter(|&t| t <= 100).ok_or_else(|| {
-                    self.page.fault(ticks.span(), format_args!("delay_ticks = {}; 0 to 100 is allowed", ticks.get_ref()))
-                })?,
+                Some(ticks) => usize::try_from(*ticks.get_ref())
+                    .ok()
+                    .filter(|&t| t <= 100)
+                    .ok_or_else(|| {
+                        self.page.fault(
+                            ticks.span(),
+                            format_args!("delay_ticks = {}; 0 to 100 is allowed", ticks.get_ref()),
+                        )
+                    })?,
             },
         })
     }
@@ -392,13 +426,21 @@ impl Checking<'_> {
             (None, Some(word)) if word.get_ref() == "unknown" => Ok(Payload::Unknown),
             (None, Some(word)) => Err(self.page.fault(
                 word.span(),
-                format_args!("payload = {:?}; only \"unknown\" is allowed", word.get_ref()),
+                format_args!(
+                    "payload = {:?}; only \"unknown\" is allowed",
+                    word.get_ref()
+                ),
             )),
             (None, None) => Ok(Payload::Known(self.arm.payload.mass_kg as f32)),
         }
     }
 
-    fn action(&self, written: &Spanned<WrittenAction>, lasts_s: f64, actions: &mut Vec<Action>) -> Checked<()> {
+    fn action(
+        &self,
+        written: &Spanned<WrittenAction>,
+        lasts_s: f64,
+        actions: &mut Vec<Action>,
+    ) -> Checked<()> {
         let (span, written) = (written.span(), written.get_ref());
         let at_s = self.number(&written.at_s, "at_s", "s", 0.0..=lasts_s)?;
         let before = actions.len();
@@ -417,14 +459,28 @@ impl Checking<'_> {
             add(What::Told(Payload::Known(kg as f32)));
         }
         if let Some(impulse) = &written.knock_n_s {
-            add(What::Knock(self.number(impulse, "knock_n_s", "N s", -1e4..=1e4)?));
+            add(What::Knock(self.number(
+                impulse,
+                "knock_n_s",
+                "N s",
+                -1e4..=1e4,
+            )?));
         }
         if let Some(kg) = &written.payload_kg {
-            add(What::Payload(self.number(kg, "payload_kg", "kg", 0.0..=1e4)?));
+            add(What::Payload(self.number(
+                kg,
+                "payload_kg",
+                "kg",
+                0.0..=1e4,
+            )?));
         }
         if let Some(side) = &written.break_tendon {
             let sides = [("a", Side::A), ("b", Side::B)];
-            add(What::BreakTendon(self.one_of(side, "break_tendon", &sides)?));
+            add(What::BreakTendon(self.one_of(
+                side,
+                "break_tendon",
+                &sides,
+            )?));
         }
         if let Some(what) = self.fault(written)? {
             add(what);
@@ -441,11 +497,15 @@ impl Checking<'_> {
             (written.offset_deg.as_ref().map(Spanned::span), "offset_deg"),
             (written.offset_n.as_ref().map(Spanned::span), "offset_n"),
         ];
-        let mut given = given.into_iter().filter_map(|(span, key)| Some((span?, key)));
+        let mut given = given
+            .into_iter()
+            .filter_map(|(span, key)| Some((span?, key)));
         let (first, second) = (given.next(), given.next());
         let Some(sensor) = &written.sensor else {
             return first.map_or(Ok(None), |(span, key)| {
-                Err(self.page.fault(span, format_args!("{key} needs sensor = \"...\" beside it")))
+                Err(self
+                    .page
+                    .fault(span, format_args!("{key} needs sensor = \"...\" beside it")))
             });
         };
         let sensors = [
@@ -457,7 +517,10 @@ impl Checking<'_> {
         let name = self.one_of(sensor, "sensor", &sensors)?;
         let angle = !matches!(name, SensorName::Tension(_));
         if let Some((span, key)) = second {
-            return Err(self.page.fault(span, format_args!("{key} beside another fault of the same sensor")));
+            return Err(self.page.fault(
+                span,
+                format_args!("{key} beside another fault of the same sensor"),
+            ));
         }
         let fault = if let Some(fault) = &written.fault {
             let faults = [
@@ -489,26 +552,36 @@ impl Checking<'_> {
                 format_args!("mode = {:?}; allowed is {allowed}", written.mode.get_ref()),
             )
         })?;
-        let refused = match &written.refused {
-            None => None,
-            Some(name) => Some(refusal_named(name.get_ref()).map_err(|allowed| {
+        let mut refused = Vec::new();
+        for name in &written.refused {
+            refused.push(refusal_named(name.get_ref()).map_err(|allowed| {
                 self.page.fault(
                     name.span(),
                     format_args!("refused = {:?}; allowed is {allowed}", name.get_ref()),
                 )
-            })?),
-        };
+            })?);
+        }
         let within = match &written.within_deg {
-            Some(within) => self.number(within, "within_deg", "deg", 0.0..=180.0)?.to_radians(),
+            Some(within) => self
+                .number(within, "within_deg", "deg", 0.0..=180.0)?
+                .to_radians(),
             None => DEFAULT_WITHIN_RAD,
         };
         let tip = match &written.tip_angle_deg {
-            Some(tip) => Some((self.number(tip, "tip_angle_deg", "deg", -720.0..=720.0)?.to_radians(), within)),
+            Some(tip) => Some((
+                self.number(tip, "tip_angle_deg", "deg", -720.0..=720.0)?
+                    .to_radians(),
+                within,
+            )),
             None => None,
         };
         Ok(Expected {
             mode,
-            branch: written.branch.as_ref().map(|branch| self.branch(branch)).transpose()?,
+            branch: written
+                .branch
+                .as_ref()
+                .map(|branch| self.branch(branch))
+                .transpose()?,
             refused,
             tip,
             must: self.events(&written.must)?,
@@ -519,12 +592,18 @@ impl Checking<'_> {
     fn events(&self, names: &[Spanned<String>]) -> Checked<Events> {
         let mut events = Events::NONE;
         for name in names {
-            let known = Events::ALL.iter().find(|(_, known)| known == name.get_ref());
+            let known = Events::ALL
+                .iter()
+                .find(|(_, known)| known == name.get_ref());
             let Some((event, _)) = known else {
                 let all: Vec<&str> = Events::ALL.iter().map(|(_, name)| *name).collect();
                 return Err(self.page.fault(
                     name.span(),
-                    format_args!("no event is called {:?}; there are: {}", name.get_ref(), all.join(", ")),
+                    format_args!(
+                        "no event is called {:?}; there are: {}",
+                        name.get_ref(),
+                        all.join(", ")
+                    ),
                 ));
             };
             events |= *event;
@@ -567,7 +646,10 @@ impl Checking<'_> {
         if let Some(other) = other {
             return Err(self.page.fault(
                 other.span(),
-                format_args!("the setpoint of this arm is given by {}", self.setpoint_key()),
+                format_args!(
+                    "the setpoint of this arm is given by {}",
+                    self.setpoint_key()
+                ),
             ));
         }
         let Some(own) = own else { return Ok(None) };
@@ -576,25 +658,48 @@ impl Checking<'_> {
         Ok(Some(if held { value.to_radians() } else { value }))
     }
 
-    fn number(&self, value: &Spanned<f64>, key: &str, unit: &str, allowed: RangeInclusive<f64>) -> Checked<f64> {
+    fn number(
+        &self,
+        value: &Spanned<f64>,
+        key: &str,
+        unit: &str,
+        allowed: RangeInclusive<f64>,
+    ) -> Checked<f64> {
         let number = *value.get_ref();
         if allowed.contains(&number) {
             return Ok(number);
         }
-        let unit = if unit.is_empty() { String::new() } else { format!(" {unit}") };
+        let unit = if unit.is_empty() {
+            String::new()
+        } else {
+            format!(" {unit}")
+        };
         Err(self.page.fault(
             value.span(),
-            format_args!("{key} = {number}; {} to {}{unit} is allowed", allowed.start(), allowed.end()),
+            format_args!(
+                "{key} = {number}; {} to {}{unit} is allowed",
+                allowed.start(),
+                allowed.end()
+            ),
         ))
     }
 
-    fn one_of<T: Copy>(&self, word: &Spanned<String>, key: &str, allowed: &[(&str, T)]) -> Checked<T> {
+    fn one_of<T: Copy>(
+        &self,
+        word: &Spanned<String>,
+        key: &str,
+        allowed: &[(&str, T)],
+    ) -> Checked<T> {
         let found = allowed.iter().find(|(name, _)| name == word.get_ref());
         found.map(|(_, value)| *value).ok_or_else(|| {
             let names: Vec<&str> = allowed.iter().map(|(name, _)| *name).collect();
             self.page.fault(
                 word.span(),
-                format_args!("{key} = {:?}; allowed is {}", word.get_ref(), names.join(", ")),
+                format_args!(
+                    "{key} = {:?}; allowed is {}",
+                    word.get_ref(),
+                    names.join(", ")
+                ),
             )
         })
     }

@@ -57,7 +57,9 @@ impl fmt::Display for StageError {
         match self {
             Self::Table(why) | Self::Settings(why) => f.write_str(why),
             Self::RestStates(error) => error.fmt(f),
-            Self::Start { scenario, why } => write!(f, "scenario \"{scenario}\" cannot begin: {why}"),
+            Self::Start { scenario, why } => {
+                write!(f, "scenario \"{scenario}\" cannot begin: {why}")
+            }
             Self::Motion { scenario, error } => write!(f, "scenario \"{scenario}\": {error}"),
         }
     }
@@ -100,7 +102,11 @@ impl Stage {
     /// # Errors
     /// [`StageError::Table`].
     pub fn of(tabulation: &Tabulation, bytes: Vec<u8>) -> Result<Self, StageError> {
-        Self::with_rest(tabulation.arm.clone(), tabulation.corners.nominal.clone(), bytes)
+        Self::with_rest(
+            tabulation.arm.clone(),
+            tabulation.corners.nominal.clone(),
+            bytes,
+        )
     }
 
     fn with_rest(arm: Arm, rest: RestStates, bytes: Vec<u8>) -> Result<Self, StageError> {
@@ -115,7 +121,11 @@ impl Stage {
 
     /// The table, with its crossings or without.
     pub fn table(&self, plans: bool) -> Table<'_> {
-        let bytes = if plans { &self.bytes } else { &self.without_plans };
+        let bytes = if plans {
+            &self.bytes
+        } else {
+            &self.without_plans
+        };
         Table::new(bytes).expect("checked when the stage was made")
     }
 
@@ -130,7 +140,8 @@ impl Stage {
         let Ok(load) = table.load(payload) else {
             return false;
         };
-        load.slices().all(|slice| slice.crossings().any(|crossing| crossing.allowed))
+        load.slices()
+            .all(|slice| slice.crossings().any(|crossing| crossing.allowed))
     }
 
     /// The arm that is really there, at rest on the branch at the setpoint (rad or N m), and the tensions that hold it (N).
@@ -154,7 +165,9 @@ impl Stage {
             .rest
             .at(&mut Solver::new(&self.rest.modal), at)
             .map_err(|error| error.to_string())?;
-        let own = states.into_iter().find(|(number, _)| *number == usize::from(branch));
+        let own = states
+            .into_iter()
+            .find(|(number, _)| *number == usize::from(branch));
         let Some((_, point)) = own else {
             return Err(format!("branch {branch} does not reach its setpoint"));
         };

@@ -67,7 +67,10 @@ impl Narrator {
             last_s: vec![f64::NEG_INFINITY; Events::ALL.len()],
         };
         let at = setpoint(drive, request.setpoint.into());
-        let text = format!("switches the firmware on, says it carries {}, asks to arm at {at}", told(request.payload));
+        let text = format!(
+            "switches the firmware on, says it carries {}, asks to arm at {at}",
+            told(request.payload)
+        );
         narrator.say(0.0, Who::Caller, text);
         narrator
     }
@@ -83,7 +86,10 @@ impl Narrator {
             What::Setpoint(value) => {
                 self.answered = None;
                 self.arrived = false;
-                (Who::Caller, format!("asks for {}", setpoint(self.drive, value)))
+                (
+                    Who::Caller,
+                    format!("asks for {}", setpoint(self.drive, value)),
+                )
             }
             What::Branch(branch) => (Who::Caller, format!("asks for branch {branch}")),
             What::Permit(true) => (Who::Caller, "permits swinging".into()),
@@ -93,10 +99,23 @@ impl Narrator {
             What::Stop(true) => (Who::Caller, "asks to stop".into()),
             What::Stop(false) => (Who::Caller, "takes the request to stop back".into()),
             What::Told(payload) => (Who::Caller, format!("says it carries {}", told(payload))),
-            What::Knock(impulse) => (Who::Arm, format!("is knocked across the tip with {impulse} N s")),
+            What::Knock(impulse) => (
+                Who::Arm,
+                format!("is knocked across the tip with {impulse} N s"),
+            ),
             What::Payload(kg) => (Who::Arm, format!("carries {:.0} g from now on", 1e3 * kg)),
-            What::BreakTendon(side) => (Who::Arm, format!("loses tendon {}: it breaks", letter(side))),
-            What::Fault(sensor, fault) => (Who::Arm, format!("{}: {}", sensor_name(sensor), fault_in_words(sensor, fault))),
+            What::BreakTendon(side) => (
+                Who::Arm,
+                format!("loses tendon {}: it breaks", letter(side)),
+            ),
+            What::Fault(sensor, fault) => (
+                Who::Arm,
+                format!(
+                    "has a {} that {} from now on",
+                    sensor_name(sensor),
+                    fault_in_words(sensor, fault)
+                ),
+            ),
         };
         self.say(at_s, who, text);
     }
@@ -109,8 +128,7 @@ impl Narrator {
             let on = match (output.mode, output.branch) {
                 (Mode::Hold, Some(branch)) => {
                     self.branch = Some(branch);
-                    let side = if tip_rad.is_finite() { format!(", tip at {}", degrees(tip_rad)) } else { String::new() };
-                    format!(" on branch {branch}{side}")
+                    format!(" on branch {branch}, tip at {}", degrees(tip_rad))
                 }
                 _ => String::new(),
             };
@@ -170,7 +188,12 @@ impl Narrator {
             Some(Answer::OnlyAsFarAs { setpoint, why, .. }) => {
                 Some(format!("goes only as far as {}: {why}", at(setpoint)))
             }
-            Some(Answer::NotOnThisSide { other, as_far_as, why, .. }) => Some(format!(
+            Some(Answer::NotOnThisSide {
+                other,
+                as_far_as,
+                why,
+                ..
+            }) => Some(format!(
                 "goes only as far as {} on this side: {why}; the request may be held on branch {other}",
                 at(as_far_as)
             )),

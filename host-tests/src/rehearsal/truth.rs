@@ -4,7 +4,7 @@ use firmware_core::{Drive, Table};
 use table_gen::arm_file::{Arm, KeepOut};
 use table_gen::margins::shape::Stations;
 use table_gen::plan::plant::Plant;
-use table_gen::rest_states::mean_angle;
+use table_gen::rest_states::modes::mean_angle;
 use table_gen::rod::Rod;
 
 /// Looks at the arm itself.
@@ -36,7 +36,9 @@ impl Observer {
     /// Looks.
     pub fn look(&self, plant: &Plant) -> Look {
         let arm = plant.arm();
-        let shape = self.stations.shape(plant.curvature_modes(), arm.base.tilt_rad);
+        let shape = self
+            .stations
+            .shape(plant.curvature_modes(), arm.base.tilt_rad);
         let clearance = shape.clearance_m(&self.keep_out, arm.spine.length_m);
         Look {
             clearance_m: clearance.map(|(clearance_m, _)| clearance_m),

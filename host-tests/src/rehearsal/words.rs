@@ -76,7 +76,8 @@ pub fn refusal_in_words(refusal: CrossingRefusal) -> String {
             "with an applied couple the arm is never swung over".to_string()
         }
         CrossingRefusal::NoPlan => {
-            "the table has no plan for this direction and payload at any setpoint in reach".to_string()
+            "the table has no plan for this direction and payload at any setpoint in reach"
+                .to_string()
         }
         CrossingRefusal::NotAllowed { successes, trials } => {
             format!("the plan succeeded in only {successes} of {trials} trials")
@@ -90,7 +91,7 @@ pub fn refusal_in_words(refusal: CrossingRefusal) -> String {
         }
         CrossingRefusal::TooManyTries => "it has been tried as often as allowed".to_string(),
     };
-    format!("it does not swing over: {why}")
+    format!("does not swing over: {why}")
 }
 
 /// A mode as what the firmware does now.

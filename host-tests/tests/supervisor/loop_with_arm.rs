@@ -159,7 +159,18 @@ impl Loop {
     }
 
     pub fn with(branch: usize, setpoint_rad: f64, options: PlantOptions) -> Self {
-        let rest = &wand().corners.nominal;
+        Self::on(wand(), table_bytes(), branch, setpoint_rad, options)
+    }
+
+    /// An arm and its table, at rest on a branch.
+    pub fn on(
+        made: &Tabulation,
+        bytes: &'static [u8],
+        branch: usize,
+        setpoint_rad: f64,
+        options: PlantOptions,
+    ) -> Self {
+        let rest = &made.corners.nominal;
         let states = rest
             .at(
                 &mut Solver::new(&rest.modal),
@@ -170,9 +181,9 @@ impl Loop {
             .iter()
             .find(|(number, _)| *number == branch)
             .expect("the branch reaches the setpoint");
-        let mut plant = Plant::new(&wand().arm, options);
+        let mut plant = Plant::new(&made.arm, options);
         let tensions = plant.set_rest(&point.c).expect("rests there");
-        let table = Table::new(table_bytes()).expect("a sound table");
+        let table = Table::new(bytes).expect("a sound table");
         let config = Config::for_arm(&table, &DriveFacts::default()).expect("sound settings");
         let request = Request {
             setpoint: setpoint_rad as f32,

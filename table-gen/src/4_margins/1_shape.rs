@@ -179,15 +179,16 @@ impl Shape {
             .map(|(number, keep_out)| {
                 let at = |p: &[f64; 2]| keep_out.region.clearance_m(p.map(|x| x * length_m));
                 let nearest = self.positions.iter().map(at).fold(f64::INFINITY, f64::min);
-                let border = match keep_out.region {
-                    Region::HalfPlane { .. } => 0.0,
-                    Region::Disc { radius_m, .. } => 1.0 / (nearest + radius_m).max(step_m),
-                };
                 // Between two stations arm and border can bulge towards each other by this much.
-                (
-                    nearest - step_m * step_m * (curvature + border) / 8.0,
-                    number,
-                )
+                let arm_bulge_m = step_m * step_m * curvature / 8.0;
+                let border_bulge_m = match keep_out.region {
+                    Region::HalfPlane { .. } => 0.0,
+                    Region::Disc { radius_m, .. } => {
+                        let to_centre_m = nearest + radius_m;
+                        (step_m * step_m / (8.0 * to_centre_m)).min(to_centre_m)
+                    }
+                };
+                (nearest - arm_bulge_m - border_bulge_m, number)
             })
             .min_by(|a, b| a.0.total_cmp(&b.0))
     }

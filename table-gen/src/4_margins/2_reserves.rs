@@ -31,7 +31,7 @@ impl Grows {
 /// Softest arm that the largest number of modes resolves well enough for a reserve.
 const SOFTEST_GAMMA: f64 = 0.012;
 /// First and longest step along the curve of (free modes, parameter).
-const STEPS: [f64; 2] = [0.1, 1.5];
+const STEPS: [f64; 2] = [0.05, 1.0];
 /// Shortest step: what cannot be followed with it ends there.
 const SHORTEST_STEP: f64 = 1e-6;
 /// Halvings of the step in which stability is lost: parameter to about 1e-9.
@@ -87,8 +87,8 @@ impl<'a> Reserve<'a> {
         let mut step = STEPS[0];
         loop {
             let ahead = self.step(&point, step).filter(|next| {
-                // The tangent may turn by some 25 degrees, or all the way over at a fold that a short step passes.
-                point.tangent.dot(&next.tangent) > 0.9
+                // The tangent may turn by some 11 degrees, or all the way over at a fold that a short step passes.
+                point.tangent.dot(&next.tangent) > 0.98
             });
             let Some(next) = ahead else {
                 step *= 0.5;
@@ -104,7 +104,7 @@ impl<'a> Reserve<'a> {
                 return None;
             }
             point = next;
-            step = (2.0 * step).min(STEPS[1]);
+            step = (1.5 * step).min(STEPS[1]);
         }
     }
 

@@ -5,6 +5,9 @@
 //! the simulated arm in every corner of the tolerances (`2_swing/2_trial.rs`). The first way that succeeds in every corner within
 //! every limit is stored as allowed; where none does, the one that got furthest is stored as not allowed.
 //!
+//! A crossing may end further towards the other branch than need be: then the arm leans that way while it swings, and the pass it
+//! has to get over is lower.
+//!
 //! The trials differ from each other in stiffness and tilt (the tolerances of the arm file; the stiffness a little beyond, by
 //! what the board's survey can be wrong), damping, friction, sensor noise, bias and delay. The same arm and the same seed give the
 //! same plan, on any number of cores.
@@ -30,7 +33,8 @@ use std::sync::atomic::{AtomicUsize, Ordering};
 
 pub use kept::{plan_or_kept, plan_path};
 
-/// Changes with the planner: plans kept from another version are made anew.
+/// To be raised with every change of the planner, the simulated arm or the firmware's supervisor: plans kept from another version
+/// are made anew.
 pub const PLANNER_VERSION: u32 = 1;
 /// Seed of the sensor noise in the trials.
 pub const SEED: u64 = 20;

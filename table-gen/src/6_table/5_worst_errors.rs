@@ -25,7 +25,7 @@ const NAMES: [&str; QUANTITIES] = [
 /// The worst of all comparisons.
 #[derive(Clone, Copy, Debug, Default)]
 pub(super) struct Measured {
-    pub(super) barrier_j: f64,
+    barrier_j: f64,
     pub(super) compared: usize,
     by_quantity: Quantities,
 }
@@ -68,6 +68,7 @@ impl Measured {
             tip_angle_rad,
             couple_n_m,
             energy_j,
+            barrier_j: (self.barrier_j as f32).next_up(),
             tip_m: tip_x.max(tip_y),
             restoring_n_m_per_rad,
         }

@@ -46,8 +46,6 @@ pub struct Tabulation {
     pub usable: Usable,
     /// Worst differences between the firmware's answers and fresh solves.
     pub worst_error: WorstError,
-    /// The same of the barriers (J).
-    pub worst_barrier_error_j: f64,
     /// Answers that were compared.
     pub compared: usize,
     /// The table.
@@ -163,7 +161,6 @@ pub fn tabulate(arm: &Arm, progress: &(dyn Fn(f64) + Sync)) -> Result<Tabulation
         corners,
         usable,
         worst_error,
-        worst_barrier_error_j: measured.barrier_j,
         compared: measured.compared,
         bytes,
     })

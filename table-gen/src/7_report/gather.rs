@@ -374,7 +374,7 @@ impl Gatherer<'_> {
             degrees("mean angle", worst.mean_angle_rad),
             conjugate,
             percent("energy", f64::from(worst.energy_j)),
-            percent("barrier", self.tabulation.worst_barrier_error_j),
+            percent("barrier", f64::from(worst.barrier_j)),
             (
                 "tip position".to_string(),
                 1e3 * f64::from(worst.tip_m),

@@ -37,6 +37,23 @@ const SCRIPT: &str = concat!(
 );
 const D3: &str = include_str!("vendor/d3-subset.min.js");
 
+/// What other pages of this project take over to look like this one.
+#[derive(Clone, Copy, Debug)]
+pub struct Looks {
+    /// The style sheet.
+    pub style: &'static str,
+    /// The D3 modules, as a script that defines `d3`.
+    pub drawing: &'static str,
+}
+
+/// The looks of the report page.
+pub fn looks() -> Looks {
+    Looks {
+        style: STYLE,
+        drawing: D3,
+    }
+}
+
 /// The whole page as HTML.
 ///
 /// Any data gives a page: names and sentences are escaped, numbers that are not finite show as a dash. The same data

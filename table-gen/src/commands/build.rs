@@ -123,7 +123,7 @@ fn summarise(tabulation: &Tabulation) {
     );
     println!(
         "  barrier     {:.4} % of m g L",
-        100.0 * tabulation.worst_barrier_error_j / scale
+        100.0 * f64::from(worst.barrier_j) / scale
     );
     println!("  tip         {:.3} mm", 1e3 * f64::from(worst.tip_m));
     println!("  restoring   {:.2e} N m/rad", worst.restoring_n_m_per_rad);

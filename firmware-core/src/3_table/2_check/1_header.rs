@@ -49,6 +49,7 @@ pub(super) fn check(bytes: &[u8]) -> Result<Limits, Fault> {
         ("worst_error.tip_angle_rad", error.tip_angle_rad),
         ("worst_error.couple_n_m", error.couple_n_m),
         ("worst_error.energy_j", error.energy_j),
+        ("worst_error.barrier_j", error.barrier_j),
         ("worst_error.tip_m", error.tip_m),
         (
             "worst_error.restoring_n_m_per_rad",

@@ -18,6 +18,8 @@ const COMMON_RUNS: usize = 2;
 const MOST_OWN_RUNS: usize = 5;
 /// Distance from the end of a stretch to where a crossing ends (rad).
 const INSET_RAD: f64 = 0.01;
+/// How much further towards the other branch it may end (rad).
+const FURTHER_RAD: [f64; 4] = [0.0, 0.14, 0.28, 0.42];
 /// A run narrower than this is no use (rad).
 const NARROWEST_RAD: f64 = 2e-3;
 
@@ -31,8 +33,9 @@ pub(super) struct Place {
     pub(super) to: usize,
     /// Setpoints from which the crossing begins (rad).
     pub(super) run: [f64; 2],
-    /// Setpoint at which it ends (rad).
-    pub(super) rest: f64,
+    /// Setpoints at which it may end (rad), the nearest first: further towards the other branch the pass is lower, and on the
+    /// way there the arm leans.
+    pub(super) rests: Vec<f64>,
     /// The end of the branch `from` towards `to`, the farthest in any corner (rad), where it is a fold.
     pub(super) fold: Option<f64>,
 }
@@ -130,14 +133,19 @@ impl Pair<'_> {
         runs.filter(|run| run[1] - run[0] > NARROWEST_RAD)
             .filter_map(|run| {
                 let middle = 0.5 * (run[0] + run[1]);
-                let rest = nearest(&goals, middle)?;
-                let near = (rest - middle).abs() <= swing.max_tip_travel_rad;
-                near.then_some(Place {
+                let first = nearest(&goals, middle)?;
+                let mut rests: Vec<f64> = FURTHER_RAD
+                    .iter()
+                    .filter_map(|further| nearest(&goals, first + self.way * further))
+                    .filter(|rest| (rest - middle).abs() <= swing.max_tip_travel_rad)
+                    .collect();
+                rests.dedup();
+                (!rests.is_empty()).then_some(Place {
                     slice: self.slice,
                     from: self.from,
                     to: self.to,
                     run,
-                    rest,
+                    rests,
                     fold,
                 })
             })

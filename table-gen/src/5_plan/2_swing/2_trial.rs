@@ -148,7 +148,10 @@ impl Trial<'_> {
                 return self.arrived(run, table);
             }
             if begun.is_none() && now_s > LONGEST_START_S || since_s > LONGEST_UNITS * unit_s {
-                return Err(format!("still in mode {:?} after {now_s:.1} s", output.mode));
+                return Err(format!(
+                    "still in mode {:?} after {now_s:.1} s",
+                    output.mode
+                ));
             }
         }
     }
@@ -169,10 +172,9 @@ impl Trial<'_> {
             return Err(format!("strain of {:.4}", measures.strain));
         }
         match measures.clearance_m {
-            Some(clearance) if clearance < self.arm.require.clearance_m => Err(format!(
-                "{:.1} mm from a keep-out region",
-                1e3 * clearance
-            )),
+            Some(clearance) if clearance < self.arm.require.clearance_m => {
+                Err(format!("{:.1} mm from a keep-out region", 1e3 * clearance))
+            }
             _ => Ok(()),
         }
     }
@@ -184,7 +186,10 @@ impl Trial<'_> {
             let slice = table.slices().find(|s| s.payload_kg == payload_kg)?;
             let covers = slice.branch(branch)?.entry;
             let at = setpoint.clamp(covers.from, covers.to);
-            slice.at(branch, at).ok().map(|s| f64::from(s.mean_angle_rad))
+            slice
+                .at(branch, at)
+                .ok()
+                .map(|s| f64::from(s.mean_angle_rad))
         };
         let crossing = self.crossing;
         let here = mean_angle(run.plant.curvature_modes());

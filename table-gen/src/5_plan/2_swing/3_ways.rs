@@ -14,8 +14,8 @@ use firmware_core::{Crossing, Method, SurveyBand, Table, UNBOUNDED};
 const AMPLITUDES_RAD: [f64; 4] = [0.3, 0.4, 0.5, 0.6];
 /// Steepness of the tip's motion over the rate of the mean angle.
 const ETA: f64 = 2.5;
-/// How far past the fold a lean goes, as fractions of the way to it from where the arm is to rest.
-const LEANS: [f64; 3] = [1.35, 1.7, 1.1];
+/// How far a lean goes, as fractions of the way from where it begins to the fold.
+const LEANS: [f64; 2] = [1.35, 1.1];
 /// Least lean past the fold (rad).
 const LEAST_LEAN_RAD: f64 = 0.1;
 /// Amplitude of the brake after a lean (rad).
@@ -77,21 +77,57 @@ impl Search<'_> {
         (self.arm.spine.length_m / STANDARD_GRAVITY_M_S2).sqrt()
     }
 
-    /// Plans worth a try, as they are written while being tried.
+    /// Plans worth a try, as they are written while being tried: the least tip movement first.
     fn ways(&self, place: &Place) -> Vec<Crossing> {
+        let travel = self.swing.max_tip_travel_rad - TRAVEL_KEPT_RAD;
+        let middle = 0.5 * (place.run[0] + place.run[1]);
+        let mut ways = Vec::new();
+        for &rest in &place.rests {
+            let inject = self.injection(place, rest, travel);
+            let amplitudes = AMPLITUDES_RAD
+                .iter()
+                .filter(|&&amplitude| amplitude <= travel);
+            ways.extend(amplitudes.map(|&amplitude| Crossing {
+                amplitude_rad: amplitude as f32,
+                ..inject
+            }));
+        }
+        let Some(fold) = place.fold else {
+            return ways;
+        };
+        let way = (fold - middle).signum();
+        for &rest in &place.rests {
+            let ahead = way * (fold - rest);
+            for share in LEANS {
+                let past = ahead + ((share - 1.0) * (fold - middle).abs()).max(LEAST_LEAN_RAD);
+                if ahead > 0.0 && past <= travel {
+                    ways.push(Crossing {
+                        method: Method::Lean,
+                        amplitude_rad: BRAKE_RAD.min(travel) as f32,
+                        lean_setpoint: (rest + way * past) as f32,
+                        longest_s: (2.0 * LONGEST_UNITS * self.unit_s()) as f32,
+                        ..self.injection(place, rest, travel)
+                    });
+                }
+            }
+        }
+        ways
+    }
+
+    /// An injection that ends at `rest`, without its amplitude.
+    fn injection(&self, place: &Place, rest: f64, travel: f64) -> Crossing {
         let tendons = &self.arm.tendons;
         let most_n_m = (tendons.max_tension_n - tendons.pretension_n) * tendons.offset_m;
-        let travel = self.swing.max_tip_travel_rad - TRAVEL_KEPT_RAD;
-        let inject = Crossing {
+        Crossing {
             from: place.from as u8,
             to: place.to as u8,
             setpoint_from: (place.run[0] as f32).next_up(),
             setpoint_to: (place.run[1] as f32).next_down(),
             method: Method::Inject,
-            rest_setpoint: place.rest as f32,
+            rest_setpoint: rest as f32,
             amplitude_rad: 0.0,
             eta: ETA as f32,
-            lean_setpoint: place.rest as f32,
+            lean_setpoint: rest as f32,
             longest_s: (LONGEST_UNITS * self.unit_s()) as f32,
             most_tip_travel_rad: travel as f32,
             most_couple_n_m: self.swing.max_couple_n_m.min(0.999_99 * most_n_m) as f32,
@@ -103,31 +139,7 @@ impl Search<'_> {
             successes: 1,
             trials: 1,
             allowed: true,
-        };
-        let mut ways: Vec<Crossing> = AMPLITUDES_RAD
-            .iter()
-            .filter(|&&amplitude| amplitude <= travel)
-            .map(|&amplitude| Crossing {
-                amplitude_rad: amplitude as f32,
-                ..inject
-            })
-            .collect();
-        if let Some(fold) = place.fold {
-            let way = (fold - 0.5 * (place.run[0] + place.run[1])).signum();
-            for share in LEANS {
-                let past = (share * (fold - place.rest).abs())
-                    .max((fold - place.rest).abs() + LEAST_LEAN_RAD);
-                if past <= travel && way * (fold - place.rest) > 0.0 {
-                    ways.push(Crossing {
-                        method: Method::Lean,
-                        amplitude_rad: BRAKE_RAD.min(travel) as f32,
-                        lean_setpoint: (place.rest + way * past) as f32,
-                        ..inject
-                    });
-                }
-            }
         }
-        ways
     }
 
     /// Tries one way in every corner until one fails. The corner that fails comes first from then on, as it is the likeliest
@@ -187,9 +199,7 @@ impl Search<'_> {
         let inset = 0.05 * (hi - lo);
         let setpoint = lo + inset + corner.place * (hi - lo - 2.0 * inset);
         let lost = || ("no rest state to begin from".to_string(), None);
-        let begins = self
-            .start(place, corner, setpoint)
-            .ok_or_else(lost)?;
+        let begins = self.start(place, corner, setpoint).ok_or_else(lost)?;
         let trial = Trial {
             arm: self.arm,
             payload_kg: self.corners.payloads_kg[place.slice],
@@ -203,23 +213,14 @@ impl Search<'_> {
             .map_err(|(why, measures)| (why, Some(measures)))
     }
 
-    /// The rest state on the branch at `setpoint`, of the corner of the tolerances nearest to the trial's.
+    /// The rest state on the branch at `setpoint` of the arm in `corner`.
     fn start(&self, place: &Place, corner: Corner, setpoint: f64) -> Option<Vec<f64>> {
         let state = self.corners.nominal_state(place.from, setpoint)?;
-        let nearest = self
-            .corners
-            .arms
-            .iter()
-            .filter(|arm| arm.slice == place.slice)
-            .min_by(|a, b| {
-                let off = |arm: &crate::margins::corners::CornerArm| {
-                    let stiffness = 1.0 + 0.01 * arm.corner.stiffness_percent;
-                    let tilt = arm.corner.tilt_deg.to_radians();
-                    (stiffness - corner.stiffness).abs() + (tilt - corner.tilt_rad).abs()
-                };
-                off(a).total_cmp(&off(b))
-            })?;
-        nearest.follow(&self.corners.nominal, &state)
+        let mut arms = self.corners.arms.iter();
+        let mut arm = arms.find(|arm| arm.slice == place.slice)?.clone();
+        arm.corner.stiffness_percent = 100.0 * (corner.stiffness - 1.0);
+        arm.corner.tilt_deg = corner.tilt_rad.to_degrees();
+        arm.follow(&self.corners.nominal, &state)
     }
 
     /// The plan with what was measured. `longest_s` is cut to what it took, with half as much again.
@@ -260,7 +261,11 @@ impl Search<'_> {
     fn trial_corners(&self) -> Vec<Corner> {
         let reach = self.stiffness_reach;
         let tilt = self.arm.base.tolerance_rad;
-        let tilts: &[f64] = if tilt > 0.0 { &[-1.0, 1.0, 0.0] } else { &[0.0] };
+        let tilts: &[f64] = if tilt > 0.0 {
+            &[-1.0, 1.0, 0.0]
+        } else {
+            &[0.0]
+        };
         let mut corners: Vec<Corner> = Vec::new();
         for round in 0..2_usize {
             for (i, side) in [-1.0, 1.0, 0.0].into_iter().enumerate() {

@@ -29,7 +29,11 @@ fn origin(arm: &Arm, draft: &[u8]) -> [u8; 32] {
 
 /// Where the plans of an arm are kept within `directory`.
 pub fn plan_path(directory: &Path, arm: &Arm) -> PathBuf {
-    let fingerprint: String = arm.fingerprint().iter().map(|b| format!("{b:02x}")).collect();
+    let fingerprint: String = arm
+        .fingerprint()
+        .iter()
+        .map(|b| format!("{b:02x}"))
+        .collect();
     directory.join(format!("{fingerprint}-v{PLANNER_VERSION}.plan"))
 }
 
