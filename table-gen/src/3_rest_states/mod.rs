@@ -194,6 +194,7 @@ impl RestStates {
         );
         let starts = two_coordinate_starts(rod);
         let exact: Vec<(f64, Vec<Shot>)> = spread(rod.setpoints, AUDIT_SETPOINTS)
+            .map(|x| beside_folds(x, &shooting, rod, &allowed))
             .map(|x| (x, shooting.rest_states(x)))
             .collect();
         let mut solved = 0;
@@ -316,6 +317,22 @@ fn two_coordinate_starts(rod: &Rod) -> Vec<(f64, [f64; 2])> {
                 .map(move |root| (setpoint, root.c))
         })
         .collect()
+}
+
+/// An audit setpoint, moved off a fold that it is closer to than folds have to agree: how many rest states there are that close
+/// to it says nothing.
+fn beside_folds(setpoint: f64, shooting: &Shooting, rod: &Rod, allowed: &Distance) -> f64 {
+    let agree = match rod.held {
+        Held::TipAngle => allowed.angle_rad,
+        Held::TipCouple => allowed.couple,
+    };
+    let [lo, hi] = rod.setpoints;
+    let near = |fold: &&Shot| (fold.setpoint - setpoint).abs() < 2.0 * agree;
+    match shooting.folds().iter().find(near) {
+        None => setpoint,
+        Some(fold) if fold.setpoint + 4.0 * agree <= hi => fold.setpoint + 4.0 * agree,
+        Some(fold) => (fold.setpoint - 4.0 * agree).max(lo),
+    }
 }
 
 /// `count` setpoints spread evenly over `range`, ends included.
