@@ -347,7 +347,8 @@ pub fn run(stage: &Stage, case: &Case) -> Result<Outcome, StageError> {
         let settled = matches!(output.mode, Mode::Hold | Mode::Stopped)
             && output.mode == before.mode
             && output.setpoint == before.setpoint
-            && output.branch == before.branch;
+            && output.branch == before.branch
+            && watched.calm_s >= CALM_S;
         // What is wanted and not refused is still to come.
         let to_come =
             output.mode == Mode::Hold && output.branch != Some(wanted) && output.refused.is_none();
@@ -447,6 +448,8 @@ pub struct Counts {
     pub crossings_asked: usize,
     /// Of these refused, the arm staying where it was.
     pub crossings_refused: usize,
+    /// Of these carried over all the same, by a knock.
+    pub crossings_by_knock: usize,
     /// By reason.
     pub refusals: Vec<(&'static str, usize)>,
     /// Of these stopped before a crossing began.
@@ -465,6 +468,8 @@ pub struct Counts {
     pub knocked_stopped: usize,
     /// Moves asked for.
     pub moves: usize,
+    /// Of these holding on the other side, and saying so, where a knock threw them.
+    pub moves_thrown: usize,
     /// Of these holding on their branch.
     pub moves_held: usize,
     /// Of these stopped.
@@ -507,6 +512,7 @@ impl Counts {
             Task::Move(_) => {
                 self.moves += 1;
                 self.moves_held += succeeded;
+                self.moves_thrown += usize::from(outcome.end == End::Holds && !outcome.on_wanted);
                 self.moves_stopped += stopped;
             }
             Task::Cross { .. } => {
@@ -514,6 +520,7 @@ impl Counts {
                 if !outcome.begun {
                     self.stopped_before += stopped;
                     self.crossings_refused += usize::from(outcome.end == End::Holds);
+                    self.crossings_by_knock += succeeded;
                     if let (Some(name), End::Holds) = (outcome.refused, outcome.end) {
                         match self.refusals.iter_mut().find(|(known, _)| *known == name) {
                             Some((_, count)) => *count += 1,
@@ -560,6 +567,10 @@ impl Counts {
             ),
             ("crossings asked for".to_string(), self.crossings_asked),
             ("  refused".to_string(), self.crossings_refused),
+            (
+                "    carried over by a knock, and said so".to_string(),
+                self.crossings_by_knock,
+            ),
         ];
         rows.extend(
             self.refusals
@@ -585,6 +596,10 @@ impl Counts {
             ("    stopped".to_string(), self.knocked_stopped),
             ("moves asked for".to_string(), self.moves),
             ("  hold on their side".to_string(), self.moves_held),
+            (
+                "  hold where a knock threw them, and say so".to_string(),
+                self.moves_thrown,
+            ),
             ("  stopped".to_string(), self.moves_stopped),
             ("knocked over".to_string(), self.knocked_over),
             (

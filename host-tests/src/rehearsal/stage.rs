@@ -165,15 +165,20 @@ impl Stage {
             .rest
             .at(&mut Solver::new(&self.rest.modal), at)
             .map_err(|error| error.to_string())?;
+        let rests: Vec<String> = states
+            .iter()
+            .filter(|(_, point)| point.index == 0)
+            .map(|(number, _)| number.to_string())
+            .collect();
         let own = states
             .into_iter()
-            .find(|(number, _)| *number == usize::from(branch));
+            .find(|(number, point)| *number == usize::from(branch) && point.index == 0);
         let Some((_, point)) = own else {
-            return Err(format!("branch {branch} does not reach its setpoint"));
+            return Err(format!(
+                "nothing rests on branch {branch} at its setpoint; the stable branches there are {}",
+                rests.join(", ")
+            ));
         };
-        if point.index != 0 {
-            return Err(format!("branch {branch} is unstable: nothing rests there"));
-        }
         // From the arm of the file to the real one in steps, so that the rest state stays the same one.
         let mut c = point.c;
         for step in 1..=STEPS {
