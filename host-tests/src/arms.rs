@@ -1,6 +1,7 @@
 //! Arms from dimensionless numbers, and their rest states.
 
 use crate::tolerances::ASKED;
+use firmware_core::{Crossing, Method};
 use table_gen::arm_file::{Accuracy, Arm, Drive, Profile, STANDARD_GRAVITY_M_S2, parse};
 use table_gen::rest_states::curve::{RestPoint, Solver};
 use table_gen::rest_states::{RestStates, RestStatesError};
@@ -108,4 +109,30 @@ pub fn states_at(rest: &RestStates, setpoint: f64) -> Vec<RestPoint> {
         .at(&mut Solver::new(&rest.modal), setpoint)
         .unwrap_or_else(|error| panic!("{error}"));
     states.into_iter().map(|(_, state)| state).collect()
+}
+
+/// A crossing of the [`wand`] about the upright, tuned by hand.
+pub fn crossing(from: u8, to: u8) -> Crossing {
+    Crossing {
+        from,
+        to,
+        setpoint_from: -0.09,
+        setpoint_to: 0.09,
+        method: Method::Inject,
+        rest_setpoint: 0.0,
+        amplitude_rad: 0.5,
+        eta: 4.0,
+        lean_setpoint: 0.0,
+        longest_s: 8.0,
+        most_tip_travel_rad: 1.05,
+        most_couple_n_m: 0.35,
+        most_tip_speed_m_s: 3.5,
+        lowest_clearance_m: 0.02,
+        peak_couple_n_m: 0.3,
+        peak_tip_speed_m_s: 3.0,
+        takes_s: 6.0,
+        successes: 1,
+        trials: 1,
+        allowed: true,
+    }
 }

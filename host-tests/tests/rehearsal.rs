@@ -1,7 +1,8 @@
 //! Rehearsals: the shipped scenarios on the greenhouse wand, the page, wrong scenario files, and drawn cases.
 
 use firmware_core::supervisor::{Events, Mode};
-use firmware_core::{Crossing, Method, SurveyBand, Table};
+use firmware_core::{SurveyBand, Table};
+use host_tests::arms::crossing;
 use host_tests::rehearsal::closed_loop::{Run, play};
 use host_tests::rehearsal::random_cases::{Counts, monte_carlo};
 use host_tests::rehearsal::scenario::{self, SHIPPED, Scenario};
@@ -42,31 +43,6 @@ fn stage() -> &'static Stage {
         let bytes = with_crossings(&tabulation.bytes, &crossings).expect("fits the format");
         Stage::of(&tabulation, bytes).expect("made from this arm")
     })
-}
-
-fn crossing(from: u8, to: u8) -> Crossing {
-    Crossing {
-        from,
-        to,
-        setpoint_from: -0.09,
-        setpoint_to: 0.09,
-        method: Method::Inject,
-        rest_setpoint: 0.0,
-        amplitude_rad: 0.5,
-        eta: 4.0,
-        lean_setpoint: 0.0,
-        longest_s: 8.0,
-        most_tip_travel_rad: 1.05,
-        most_couple_n_m: 0.35,
-        most_tip_speed_m_s: 3.5,
-        lowest_clearance_m: 0.02,
-        peak_couple_n_m: 0.3,
-        peak_tip_speed_m_s: 3.0,
-        takes_s: 6.0,
-        successes: 1,
-        trials: 1,
-        allowed: true,
-    }
 }
 
 fn shipped() -> Vec<Scenario> {

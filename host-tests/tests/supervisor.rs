@@ -5,8 +5,8 @@ mod loop_with_arm;
 
 use firmware_core::supervisor::{CrossingRefusal, Events, Mode};
 use firmware_core::{Answer, Method, Table};
-use host_tests::arms::UniformArm;
-use loop_with_arm::{Loop, TICK_S, crossing};
+use host_tests::arms::{UniformArm, crossing};
+use loop_with_arm::{Loop, TICK_S};
 use std::f64::consts::PI;
 use table_gen::plan::plant::{
     PlantOptions, SensorFault, SensorName, SensorOptions, Side, TendonOptions,

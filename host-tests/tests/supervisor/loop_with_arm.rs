@@ -6,7 +6,8 @@ use firmware_core::format::write::{
 use firmware_core::supervisor::{
     Config, DriveFacts, Events, Input, Measured, Mode, Output, Request, State, step,
 };
-use firmware_core::{BranchEntry, Crossing, Method, Payload, Stretch, SurveyBand, Table};
+use firmware_core::{BranchEntry, Crossing, Payload, Stretch, SurveyBand, Table};
+use host_tests::arms::crossing;
 use std::sync::OnceLock;
 use table_gen::arm_file;
 use table_gen::plan::plant::{Plant, PlantOptions};
@@ -36,32 +37,6 @@ pub fn table_bytes() -> &'static [u8] {
         let plans = [crossing(0, 2), crossing(2, 0)];
         with_crossings(&wand().bytes, BAND, &plans)
     })
-}
-
-/// A crossing about the upright, tuned by hand.
-pub fn crossing(from: u8, to: u8) -> Crossing {
-    Crossing {
-        from,
-        to,
-        setpoint_from: -0.09,
-        setpoint_to: 0.09,
-        method: Method::Inject,
-        rest_setpoint: 0.0,
-        amplitude_rad: 0.5,
-        eta: 4.0,
-        lean_setpoint: 0.0,
-        longest_s: 8.0,
-        most_tip_travel_rad: 1.05,
-        most_couple_n_m: 0.35,
-        most_tip_speed_m_s: 3.5,
-        lowest_clearance_m: 0.02,
-        peak_couple_n_m: 0.3,
-        peak_tip_speed_m_s: 3.0,
-        takes_s: 6.0,
-        successes: 1,
-        trials: 1,
-        allowed: true,
-    }
 }
 
 /// The same table with these crossings in every slice.
